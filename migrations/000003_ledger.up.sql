@@ -51,7 +51,7 @@ comment on column entry.cost is 'of a split: the minimum cut, equal to the maxim
 create index entry_by_person on entry (volume_id, person, position);
 create index entry_by_time on entry (volume_id, posted_at);
 create index entry_by_task on entry (task_id) where task_id is not null;
-create index entry_by_reversed on entry (volume_id, reverses) where reverses is not null;
+create unique index entry_reversed_once on entry (volume_id, reverses) where reverses is not null;
 
 -- Nothing is ever erased: whoever is connected, superuser or not, meets the trigger. DELETE and TRUNCATE are
 -- taken from the owning role as well. (UPDATE has to stay with the owner, because PostgreSQL asks for it when a
