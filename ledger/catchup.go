@@ -2,6 +2,7 @@ package ledger
 
 import (
 	"context"
+	"time"
 
 	"github.com/jackc/pgx/v5"
 )
@@ -31,27 +32,42 @@ func (v *Volume) catchUp(ctx context.Context) error {
 	if err := readSegments(ctx, tx, v.info.VolumeID, from, news); err != nil {
 		return err
 	}
-	entries, err := queryEntries(ctx, tx, entryColumns+` where e.volume_id = $1 and position > $2 order by position`, v.info.VolumeID, from)
+	pairs, last, err := v.readPairs(ctx, tx, from)
 	if err != nil {
 		return err
 	}
 	s.advance(news)
-	for i := range entries {
-		e := &entries[i]
-		joined, err := v.byOrdinal(e.Joined)
-		if err != nil {
-			return err
-		}
-		cut, err := v.byOrdinal(e.Cut)
-		if err != nil {
-			return err
-		}
-		s.join(joined)
-		s.sever(cut)
-		s.last = e.At
+	for _, p := range pairs {
+		s.join(p.joined)
+		s.sever(p.cut)
 	}
-	s.position, s.minted, s.groups = position, minted, groups
+	s.position, s.minted, s.groups, s.last = position, minted, groups, last
 	return nil
+}
+
+// joinedAndCut is what one entry did to pairs.
+type joinedAndCut struct{ joined, cut edgeSet }
+
+// readPairs reads the pairs of the entries after a position, in order, and when the last of them was posted. Nothing of the
+// state changes until all of them are read, so that a lost connection leaves it as it was.
+func (v *Volume) readPairs(ctx context.Context, tx pgx.Tx, from int64) (out []joinedAndCut, last time.Time, err error) {
+	rows, err := tx.Query(ctx, `
+		select posted_at, joined_contacts, joined_links, cut_contacts, cut_links
+		  from entry where volume_id = $1 and position > $2 order by position`, v.info.VolumeID, from)
+	if err != nil {
+		return nil, last, err
+	}
+	var jc, jl, cc, cl []ID
+	_, err = pgx.ForEachRow(rows, []any{&last, &jc, &jl, &cc, &cl}, func() error {
+		joined, err := v.byOrdinal(Edges{Contacts: unflat(jc), Links: unflat(jl)})
+		if err != nil {
+			return err
+		}
+		cut, err := v.byOrdinal(Edges{Contacts: unflat(cc), Links: unflat(cl)})
+		out = append(out, joinedAndCut{joined, cut})
+		return err
+	})
+	return out, last.UTC(), err
 }
 
 // readPieces reads rows that ended after a position and began before it, and rows that are open now and began after

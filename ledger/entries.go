@@ -115,5 +115,6 @@ func scanEntry(row pgx.CollectableRow) (Entry, error) {
 	e.Joined = Edges{Contacts: unflat(jc), Links: unflat(jl)}
 	e.Cut = Edges{Contacts: unflat(cc), Links: unflat(cl)}
 	e.At = e.At.UTC()
+	e.Seeds = e.seedsFromContent()
 	return e, nil
 }

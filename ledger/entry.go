@@ -1,6 +1,7 @@
 package ledger
 
 import (
+	"encoding/json"
 	"strconv"
 	"time"
 
@@ -110,6 +111,17 @@ func (e *Entry) seal(digest string) error {
 	}
 	e.Content, e.Leaf = b, proof.LeafHash(b)
 	return nil
+}
+
+// seedsFromContent reads the groups of a split back from the canonical bytes, which alone hold them.
+func (e *Entry) seedsFromContent() [][]ID {
+	var c struct {
+		Seeds [][]ID `json:"seeds"`
+	}
+	if e.Kind != KindSplit || json.Unmarshal(e.Content, &c) != nil {
+		return nil
+	}
+	return c.Seeds
 }
 
 func (e Edges) json() *edgesJSON {

@@ -2,7 +2,6 @@ package ledger
 
 import (
 	"context"
-	"encoding/hex"
 	"errors"
 	"sync"
 
@@ -93,7 +92,7 @@ func openVolume(ctx context.Context, pool *pgxpool.Pool, id int32) (*Volume, err
 	if err != nil {
 		return nil, err
 	}
-	v := &Volume{pool: pool, base: b, info: b.Info(), digest: hex.EncodeToString(b.Info().Digest)}
+	v := &Volume{pool: pool, base: b, info: b.Info(), digest: b.Info().Digest}
 	if _, err := pool.Exec(ctx, `
 		insert into head (volume_id, groups) values ($1, $2) on conflict (volume_id) do nothing`,
 		id, int64(b.SegmentCount())); err != nil {

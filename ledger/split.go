@@ -63,6 +63,12 @@ func (v *Volume) splitSegment(ctx context.Context, d Draft) (Segment, [][]uint32
 		if groups[i], err = v.ordinals(ids); err != nil {
 			return Segment{}, nil, err
 		}
+		for _, id := range ids {
+			if i > 0 && slices.Contains(d.Split.Groups[0], id) {
+				return Segment{}, nil, fault.Newf(fault.Invalid, "split-seed-both", "supervoxel %s is in both groups", id).
+					WithNext("take it out of one group: a supervoxel is never divided").WithField("groups")
+			}
+		}
 	}
 	if err := v.fresh(ctx); err != nil {
 		return Segment{}, nil, err
