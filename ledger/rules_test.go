@@ -243,10 +243,10 @@ func TestTheDatabaseItselfKeepsEntries(t *testing.T) {
 	d.post(d.merge(d.ids[0], d.ids[1]))
 	d.post(d.merge(d.ids[2], d.ids[3]))
 	for sql, constraint := range map[string]string{
-		`update entry set reason = 'something else'`:             "entry_is_final",
-		`delete from entry where position = 2`:                   "entry_is_final",
-		`truncate entry`:                                         "entry_is_final",
-		`update entry set position = 7 where position = 2`:       "entry_is_final",
+		`update entry set reason = 'something else'`:              "entry_is_final",
+		`delete from entry where position = 2`:                    "entry_is_final",
+		`truncate entry`:                                          "entry_is_final",
+		`update entry set position = 7 where position = 2`:        "entry_is_final",
 		copyEntry(`position + 2`, `gen_random_uuid()`, "merge"):   "entry_gapless",
 		copyEntry(`position`, `gen_random_uuid()`, "merge"):       "entry_pkey",
 		copyEntry(`position + 1`, `entry_id`, "merge"):            "entry_once",
