@@ -3,25 +3,28 @@ package tasks
 import (
 	"context"
 	"errors"
+	"sync"
 	"time"
 
-	"github.com/google/uuid"
+	"github.com/jackc/pgx/v5"
 	"github.com/jackc/pgx/v5/pgxpool"
 
+	"fettle.example/fettle/internal/fault"
+	"fettle.example/fettle/internal/pg"
 	"fettle.example/fettle/ledger"
 )
-
-var errNotYet = errors.New("not yet")
 
 // DefaultLease is how long a claim lasts unless it is extended.
 const DefaultLease = 20 * time.Minute
 
-// Queue is the tasks of all volumes of one database.
+// Queue is the tasks of all volumes of one database. It is safe for concurrent use, by any number of processes: all
+// that it knows is in the database.
 type Queue struct {
-	Lease time.Duration // of a claim; DefaultLease unless set before use
+	Lease time.Duration // of a claim; set before use if DefaultLease does not suit
 
-	led  *ledger.Ledger
-	pool *pgxpool.Pool
+	led     *ledger.Ledger
+	pool    *pgxpool.Pool
+	volumes sync.Map // name -> int32, which never changes
 }
 
 // NewQueue returns the queue of a migrated database.
@@ -29,196 +32,89 @@ func NewQueue(led *ledger.Ledger, pool *pgxpool.Pool) *Queue {
 	return &Queue{Lease: DefaultLease, led: led, pool: pool}
 }
 
-// ClaimOptions narrow down what a person wants. Zero fields narrow nothing.
-type ClaimOptions struct {
-	Task     int64 // this one and no other
-	Kinds    []string
-	Families []string
-	ID       uuid.UUID // the claim's own id, made by the caller, version 7: the same id again gets the same answer
+// volume finds a volume's internal number without opening it.
+func (q *Queue) volume(ctx context.Context, name string) (int32, error) {
+	if id, ok := q.volumes.Load(name); ok {
+		return id.(int32), nil
+	}
+	var id int32
+	err := q.pool.QueryRow(ctx, `select volume_id from volume where name = $1`, name).Scan(&id)
+	if errors.Is(err, pgx.ErrNoRows) {
+		return 0, fault.Newf(fault.NotFound, "volume-unknown", "there is no volume %q", name).
+			WithNext("list the volumes that were imported")
+	}
+	if err == nil {
+		q.volumes.Store(name, id)
+	}
+	return id, err
 }
 
-// Claim takes the next best task, or the one named. Empty queue: fault.NotFound "queue-empty".
-func (q *Queue) Claim(ctx context.Context, volume string, p Person, opt ClaimOptions) (Task, error) {
-	return Task{}, errNotYet
+// patience is how often a transaction that PostgreSQL ended to break a deadlock is tried again. Single claims change
+// rows in one order; a group of entries with several resolutions in it may not.
+const patience = 3
+
+// again runs a transaction, and runs it again if it was chosen to break a deadlock.
+func again(fn func() error) error {
+	var err error
+	for range patience {
+		if err = fn(); pg.Code(err) != "40P01" {
+			break
+		}
+	}
+	return err
 }
 
-// Held lists the tasks in a person's hands.
-func (q *Queue) Held(ctx context.Context, volume string, p Person) ([]Task, error) {
-	return nil, errNotYet
+// lockAlone takes a volume's queue lock for work that moves many tasks. It ends with the transaction.
+func lockAlone(ctx context.Context, tx pgx.Tx, volume int32) error {
+	_, err := tx.Exec(ctx, `select task_lock($1, true)`, volume)
+	return err
 }
 
-// Release gives a task back.
-func (q *Queue) Release(ctx context.Context, p Person, claim uuid.UUID, reason string) (Task, error) {
-	return Task{}, errNotYet
+// errMoved says that the queue has followed entries since a caller looked.
+var errMoved = errors.New("tasks: the queue has moved on")
+
+func queueBusy() error {
+	return fault.New(fault.Busy, "queue-busy", "others kept getting in between").WithNext("try again")
 }
 
-// Extend gives a live claim a whole lease again, from now.
-func (q *Queue) Extend(ctx context.Context, p Person, claim uuid.UUID) (Claim, error) {
-	return Claim{}, errNotYet
+// alone runs a transaction that has the queue lock to itself, if the queue's position is still the one that the
+// caller prepared it for; else errMoved.
+func (q *Queue) alone(ctx context.Context, volume int32, seen int64, fn func(ctx context.Context, tx pgx.Tx) error) error {
+	return pg.InTx(ctx, q.pool, func(ctx context.Context, tx pgx.Tx) error {
+		if err := lockAlone(ctx, tx, volume); err != nil {
+			return err
+		}
+		now, err := position(ctx, tx, volume)
+		if err != nil {
+			return err
+		}
+		if now != seen {
+			return errMoved
+		}
+		return fn(ctx, tx)
+	})
 }
 
-// Expire gives back every task whose claim ran out, and says how many.
-func (q *Queue) Expire(ctx context.Context) (int, error) { return 0, errNotYet }
+// follower is the queue's name among the ledger's followers.
+const follower = "tasks"
 
-// Resolve is how a person ends a task.
-type Resolve struct {
-	Outcome string
-	Note    string
-	Draft   *ledger.Draft // of the correction: Merge or Split, Expected, Agent. ID, Person and Task are filled in here
+// nowhere is the position of a queue that was never filled.
+const nowhere = -1
+
+// position tells how far the queue has followed the ledger.
+func position(ctx context.Context, db pg.DB, volume int32) (int64, error) {
+	var n int64
+	err := db.QueryRow(ctx, `select position from follower where volume_id = $1 and name = $2`, volume, follower).Scan(&n)
+	if errors.Is(err, pgx.ErrNoRows) {
+		return nowhere, nil
+	}
+	return n, err
 }
 
-// Resolve ends a claim with an outcome; a correction's entry commits together with it. The same claim and outcome
-// again get the same answer.
-func (q *Queue) Resolve(ctx context.Context, p Person, claim uuid.UUID, r Resolve) (Task, *ledger.Entry, error) {
-	return Task{}, nil, errNotYet
-}
-
-// Review accepts or returns a resolution. Returning a correction posts its reversal, which is the entry in the answer.
-func (q *Queue) Review(ctx context.Context, volume string, number int64, p Person, verdict, note string) (Task, *ledger.Entry, error) {
-	return Task{}, nil, errNotYet
-}
-
-// ToReview lists what a person may review, oldest first: resolved tasks, their own left out.
-func (q *Queue) ToReview(ctx context.Context, volume string, p Person, limit int) ([]Task, error) {
-	return nil, errNotYet
-}
-
-// Assign gives open tasks to a person, and returns how many. Only that person can claim them.
-func (q *Queue) Assign(ctx context.Context, volume string, lead Person, to string, numbers []int64) (int, error) {
-	return 0, errNotYet
-}
-
-// AssignBest gives the n best open tasks that nobody has been given, of a kind and family if named, to a person.
-func (q *Queue) AssignBest(ctx context.Context, volume string, lead Person, to string, n int, kind, family string) ([]int64, error) {
-	return nil, errNotYet
-}
-
-// Unassign gives assigned tasks back to everybody, and returns how many.
-func (q *Queue) Unassign(ctx context.Context, volume string, lead Person, numbers []int64) (int, error) {
-	return 0, errNotYet
-}
-
-// Post appends a correction that belongs to no task. It is refused while somebody else holds a claim on a segment.
-func (q *Queue) Post(ctx context.Context, volume string, p Person, d ledger.Draft) (ledger.Entry, error) {
-	return ledger.Entry{}, errNotYet
-}
-
-// Filter chooses tasks. Zero fields choose all.
-type Filter struct {
-	State      string
-	Kind       string
-	Family     string
-	AssignedTo string
-	Person     string // who holds or resolved it
-	Segment    *ledger.ID
-	Cursor     string // as a former page returned it
-	Limit      int    // 0: 100; at most 1000
-}
-
-// List lists tasks, best first, a page at a time; next is "" at the end.
-func (q *Queue) List(ctx context.Context, volume string, f Filter) (page []Task, next string, err error) {
-	return nil, "", errNotYet
-}
-
-// Get finds a task by its number.
-func (q *Queue) Get(ctx context.Context, volume string, number int64) (Task, error) {
-	return Task{}, errNotYet
-}
-
-// Event is one line of a task's history.
-type Event struct {
-	At     time.Time
-	Task   int64
-	Person string // "" when the program did it
-	What   string // made, claimed, released, expired, extended, resolved, accepted, returned, assigned, unassigned, moved, overtaken
-	Note   string
-}
-
-// History lists what happened to a task, oldest first.
-func (q *Queue) History(ctx context.Context, volume string, number int64) ([]Event, error) {
-	return nil, errNotYet
-}
-
-// Follow brings the tasks up to where triage has read, and returns that position.
-func (q *Queue) Follow(ctx context.Context, v *ledger.Volume) (position int64, err error) {
-	return 0, errNotYet
-}
-
-// Fill makes a task of every place that has none, and returns how many.
-func (q *Queue) Fill(ctx context.Context, v *ledger.Volume) (made int, err error) {
-	return 0, errNotYet
-}
-
-// QueueStatus is where a volume's work stands.
-type QueueStatus struct {
-	States  map[string]int // tasks by state
-	Open    []OpenKind     // what waits
-	Holders []Holder       // who works on what, by handle: personal data
-	Minutes float64        // expected, of all open tasks
-	Lag     int64          // entries that the queue has not followed yet
-}
-
-// OpenKind counts open tasks of one kind and family.
-type OpenKind struct {
-	Kind, Family string
-	Tasks        int
-	Ready        int // of them, at the head of every line
-	Minutes      float64
-	Gain         float64
-}
-
-// Holder is a person with a live claim.
-type Holder struct {
-	Person    string
-	Task      int64
-	Kind      string
-	At, Until time.Time
-}
-
-// Status says where a volume's work stands.
-func (q *Queue) Status(ctx context.Context, volume string) (QueueStatus, error) {
-	return QueueStatus{}, errNotYet
-}
-
-// ThroughputFilter chooses claims by person and by the time they ended.
-type ThroughputFilter struct {
-	Person   string         // "" is everybody
-	From, To time.Time      // To is excluded; zero: no bound
-	Zone     *time.Location // whose midnights part the days; nil is UTC
-}
-
-// Throughput is one person's work of one day. It is personal data.
-type Throughput struct {
-	Person      string
-	Day         time.Time // its first instant in the zone asked for
-	Resolved    int       // tasks
-	Corrected   int
-	Sound       int
-	Unclear     int
-	Released    int
-	Expired     int
-	ActiveHours float64
-	PerHour     float64 // tasks an active hour; 0 when there was none
-	Kinds       []KindTime
-	Reviewed    int // of the tasks resolved that day
-	Accepted    int
-	Returned    int
-	Share       float64 // accepted of reviewed; with its 95 % Wilson interval. All 0 when Reviewed is
-	ShareLo     float64
-	ShareHi     float64
-}
-
-// KindTime is how long tasks of one kind take, by Kaplan and Meier: a claim that ended without an outcome tells only
-// that the task would have taken longer.
-type KindTime struct {
-	Kind     string
-	Resolved int
-	Censored int     // released, ran out, overtaken, or still going on
-	Median   float64 // minutes; 0 when not reached
-	Reached  bool    // whether half of them ended with an outcome
-}
-
-// Throughput tells each person's work by day, newest day first.
-func (q *Queue) Throughput(ctx context.Context, volume string, f ThroughputFilter) ([]Throughput, error) {
-	return nil, errNotYet
+func onlyFor(p Person, what string, roles ...Role) error {
+	if p.Is(roles...) {
+		return nil
+	}
+	return fault.Newf(fault.Forbidden, "role-missing", "%s can't %s: that takes the role %s", p.Handle, what, roles[0]).
+		WithNext("ask a lead for the role").WithData("roles", roles)
 }

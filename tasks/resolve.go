@@ -1,0 +1,168 @@
+package tasks
+
+import (
+	"context"
+	"errors"
+	"unicode/utf8"
+
+	"github.com/google/uuid"
+
+	"fettle.example/fettle/internal/fault"
+	"fettle.example/fettle/internal/pg"
+	"fettle.example/fettle/ledger"
+)
+
+// Resolve is how a person ends a task.
+type Resolve struct {
+	Outcome string
+	Note    string
+	Draft   *ledger.Draft // of the correction: Merge or Split, Expected, Agent, Reason. ID, Person and Task are filled in here
+}
+
+// longestNote is the database's bound, in characters.
+const longestNote = 2000
+
+func (r Resolve) check() error {
+	switch {
+	case r.Outcome != Corrected && r.Outcome != Sound && r.Outcome != Unclear:
+		return fault.Newf(fault.Invalid, "outcome-unknown", "there is no outcome %q", r.Outcome).WithField("outcome").
+			WithNext("the outcomes are corrected, sound and unclear")
+	case utf8.RuneCountInString(r.Note) > longestNote:
+		return noteTooLong()
+	case r.Outcome == Corrected && (r.Draft == nil || r.Draft.Merge == nil && r.Draft.Split == nil):
+		return fault.New(fault.Invalid, "correction-missing", "\"corrected\" needs its correction, a merge or a split").WithField("outcome").
+			WithNext("send the merge or the split along, or resolve as sound or unclear")
+	case r.Outcome != Corrected && r.Draft != nil:
+		return fault.Newf(fault.Invalid, "correction-unexpected", "%q leaves the segments as they are, and a correction came with it", r.Outcome).
+			WithField("outcome").WithNext("resolve as corrected, or leave the correction away")
+	}
+	return nil
+}
+
+func noteTooLong() error {
+	return fault.Newf(fault.Invalid, "note-long", "the note is longer than %d characters", longestNote).WithField("note")
+}
+
+// Resolve ends a claim with an outcome. A correction's entry, the outcome and the end of the leases commit together,
+// or none does. The same claim with the same outcome again gets the same answer.
+//
+// Ids that retired meanwhile are fault.Retired, with the current ids; the claim is still the person's then, and they
+// may try again with those.
+func (q *Queue) Resolve(ctx context.Context, p Person, claim uuid.UUID, r Resolve) (Task, *ledger.Entry, error) {
+	if err := r.check(); err != nil {
+		return Task{}, nil, err
+	}
+	c, found, err := q.findClaim(ctx, claim)
+	if err != nil {
+		return Task{}, nil, err
+	}
+	if found && c.Person == p.Handle && c.Ended == "" {
+		err = q.resolve(ctx, p, c, r)
+		c, found, err = q.after(ctx, claim, err)
+	}
+	switch {
+	case !found:
+		return Task{}, nil, unknownClaim(claim)
+	case c.Person != p.Handle:
+		return Task{}, nil, claimOfAnother()
+	case c.Ended == EndedResolved && c.outcome == r.Outcome:
+		return q.resolved(ctx, c)
+	case err != nil:
+		return Task{}, nil, err
+	}
+	return Task{}, nil, claimEnded(c)
+}
+
+// after looks a claim up again once an attempt to end it is over, so that an attempt whose answer was lost counts.
+func (q *Queue) after(ctx context.Context, claim uuid.UUID, attempt error) (foundClaim, bool, error) {
+	if pg.Constraint(attempt) == "claim_live" {
+		attempt = nil
+	}
+	c, found, err := q.findClaim(ctx, claim)
+	return c, found, errors.Join(attempt, err)
+}
+
+func (q *Queue) resolve(ctx context.Context, p Person, c foundClaim, r Resolve) error {
+	if err := onlyFor(p, "resolve tasks", Proofreader); err != nil {
+		return err
+	}
+	if r.Outcome == Corrected {
+		return q.correct(ctx, p, c, r)
+	}
+	return again(func() error {
+		_, err := q.pool.Exec(ctx, `select claim_resolve($1, $2, $3, $4, null, null)`, c.ID, p.Handle, r.Outcome, r.Note)
+		return err
+	})
+}
+
+// correct posts the correction of a claim's task. The entry gets the claim's id, so that the same request again finds
+// it instead of posting it twice.
+func (q *Queue) correct(ctx context.Context, p Person, c foundClaim, r Resolve) error {
+	v, err := q.led.Volume(ctx, c.name)
+	if err != nil {
+		return err
+	}
+	t, err := q.get(ctx, q.pool, c.volume, c.Task)
+	if err != nil {
+		return err
+	}
+	d := *r.Draft
+	d.ID, d.Person, d.Task, d.Reversal = c.ID, p.Handle, &t.ID, nil
+	if d.Reason == "" {
+		d.Reason = r.Note
+	}
+	_, err = v.Post(ctx, d, ledger.Companion{
+		SQL: `select claim_resolve($1, $2, 'corrected', $3, $4, $5)`,
+		Args: func(position int64) []any {
+			return []any{c.ID, p.Handle, r.Note, position, d.Expected}
+		},
+	})
+	switch pg.Constraint(err) {
+	case "segment_held":
+		return q.segmentHeld(ctx, c.volume, p, d.Expected, err)
+	case "claim_corrects":
+		return fault.Newf(fault.Conflict, "correction-elsewhere", "the correction changes none of the segments of task %d", t.Number).
+			WithNext("post it outside of the task, and resolve the task by what is true of its own segments").Wrap(err)
+	}
+	return err
+}
+
+// resolved is the answer to a resolution that is stored.
+func (q *Queue) resolved(ctx context.Context, c foundClaim) (Task, *ledger.Entry, error) {
+	t, err := q.get(ctx, q.pool, c.volume, c.Task)
+	if err != nil || c.position == 0 {
+		return t, nil, err
+	}
+	e, err := q.entry(ctx, c.name, c.position)
+	return t, e, err
+}
+
+func (q *Queue) entry(ctx context.Context, volume string, position int64) (*ledger.Entry, error) {
+	v, err := q.led.Volume(ctx, volume)
+	if err != nil {
+		return nil, err
+	}
+	e, err := v.Entry(ctx, position)
+	return &e, err
+}
+
+// Post appends a correction that belongs to no task. It is refused while somebody else holds a claim on a segment
+// that it would change, since that person is looking at it.
+func (q *Queue) Post(ctx context.Context, volume string, p Person, d ledger.Draft) (ledger.Entry, error) {
+	if err := onlyFor(p, "post corrections", Proofreader, Lead, Agent); err != nil {
+		return ledger.Entry{}, err
+	}
+	v, err := q.led.Volume(ctx, volume)
+	if err != nil {
+		return ledger.Entry{}, err
+	}
+	d.Person = p.Handle
+	e, err := v.Post(ctx, d, ledger.Companion{
+		SQL:  `select segments_unheld($1, $2, $3)`,
+		Args: func(int64) []any { return []any{v.ID(), p.Handle, d.Expected} },
+	})
+	if pg.Constraint(err) == "segment_held" {
+		err = q.segmentHeld(ctx, v.ID(), p, d.Expected, err)
+	}
+	return e, err
+}
