@@ -1,0 +1,297 @@
+package base
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"os"
+	"path/filepath"
+	"slices"
+	"strings"
+	"time"
+
+	"github.com/jackc/pgx/v5/pgxpool"
+
+	"fettle.example/fettle/internal/fault"
+)
+
+// importer is one import under way.
+type importer struct {
+	ctx      context.Context
+	dir, tmp string
+	opt      ImportOptions
+	problems problems
+	warnings []string
+	files    map[string]string // path by table
+	info     Info
+
+	sv           *supervoxels
+	contacts     *sorter[contactRecord]
+	edges        *sorter[treeEdge]
+	halves       *sorter[halfRecord]
+	synapses     *sorter[synapseRecord]
+	transmitters []string
+	nuclei       []nucleusRecord
+	truth        *truths // by rank
+	layout       *layout
+	segments     []segmentRecord // by number
+}
+
+// Import reads a delivery and stores it as a new volume. A delivery that is not right is refused whole with a
+// *Refusal; a name that is taken is fault.Conflict "volume-exists". Whatever ends it early, a cancelled context, a lost
+// connection or a killed process, nothing stays behind but files that the next import removes, and it can be run again.
+//
+// Memory: some 100 bytes a supervoxel and 150 MB; contacts and synapses are sorted in files.
+func Import(ctx context.Context, pool *pgxpool.Pool, dir string, opt ImportOptions) (*Report, error) {
+	began := time.Now()
+	im := &importer{ctx: ctx, dir: dir, opt: opt}
+	tmp, err := newTempDir(opt.TempDir)
+	if err != nil {
+		return nil, err
+	}
+	defer tmp.remove()
+	im.tmp = tmp.path
+	for _, step := range []func() error{im.describe, func() error { return im.refuseTaken(pool) }, im.read, im.arrange} {
+		if err := step(); err != nil {
+			return nil, err
+		}
+	}
+	if err := im.store(pool); err != nil {
+		return nil, err
+	}
+	im.progress("done", 1, 1, "")
+	return &Report{Info: im.info, Warnings: im.warnings, Elapsed: time.Since(began)}, nil
+}
+
+func (im *importer) warnf(format string, args ...any) {
+	im.warnings = append(im.warnings, fmt.Sprintf(format, args...))
+}
+
+func (im *importer) progress(stage string, done, total int64, unit string) {
+	if im.opt.Progress != nil {
+		im.opt.Progress(Progress{stage, done, total, unit})
+	}
+}
+
+// lookUp is how many rows go by between two looks at the context and two words of progress.
+const lookUp = 1 << 14
+
+// alive ends work that nobody waits for.
+func (im *importer) alive(n int) error {
+	if n%lookUp != 0 {
+		return nil
+	}
+	return im.ctx.Err()
+}
+
+// describe reads volume.json and finds the tables.
+func (im *importer) describe() error {
+	entries, err := os.ReadDir(im.dir)
+	if err != nil {
+		return fault.Newf(fault.Invalid, "delivery-unreadable", "the folder %s cannot be read", im.dir).
+			WithNext("name the folder that holds volume.json and the tables").Wrap(err)
+	}
+	if im.info, err = readDescription(im.dir, im.opt.Name, &im.problems, func(s string) { im.warnf("%s", s) }); err != nil {
+		return err
+	}
+	im.files = make(map[string]string)
+	for _, e := range entries {
+		im.findTable(e.Name())
+	}
+	for _, t := range tables {
+		if im.files[t.name] == "" && !t.optional {
+			im.problems.add(t.name, 0, "", "", fmt.Sprintf("is missing: there is no %[1]s.csv, %[1]s.csv.gz or %[1]s.parquet", t.name))
+		}
+	}
+	return nil
+}
+
+// endings of table files.
+var endings = []string{".csv", ".csv.gz", ".parquet"}
+
+func (im *importer) findTable(file string) {
+	for _, ending := range endings {
+		name, is := strings.CutSuffix(file, ending)
+		if !is {
+			continue
+		}
+		switch {
+		case tableOrder(name) < 0:
+			im.warnf("the file %s is not read: there is no table %s", file, name)
+		case im.files[name] != "":
+			im.problems.add(name, 0, "", "", fmt.Sprintf("is there twice, as %s and as %s", filepath.Base(im.files[name]), file))
+		default:
+			im.files[name] = filepath.Join(im.dir, file)
+		}
+	}
+}
+
+// read reads and checks all tables; a *Refusal when anything is wrong.
+func (im *importer) read() (err error) {
+	if im.sv, err = im.readSupervoxels(); err != nil {
+		return err
+	}
+	if im.sv.len() == 0 && !im.problems.any() {
+		im.problems.add(supervoxelTable.name, 0, "", "", "has no rows")
+	}
+	for _, step := range []func() error{im.readContacts, im.judgeContacts, im.readSynapses, im.readNuclei, im.readTruth} {
+		if err := step(); err != nil {
+			return err
+		}
+	}
+	return im.problems.refusal()
+}
+
+// each calls fn with every row of a table, unless the table cannot be read at all.
+func (im *importer) each(t *table, fn func(*row) error) error {
+	path := im.files[t.name]
+	if path == "" {
+		return nil
+	}
+	src, err := im.open(path, t)
+	if err != nil {
+		return err
+	}
+	if src == nil {
+		return nil
+	}
+	defer src.close()
+	total := int64(0)
+	if st, err := os.Stat(path); err == nil {
+		total = st.Size()
+	}
+	r := &row{cells: make([]cell, len(t.columns))}
+	for n := 0; src.next(r); n++ {
+		if n%lookUp == 0 {
+			im.progress("reading "+t.name, src.done(), total, "bytes")
+		}
+		if err := im.alive(n); err != nil {
+			return err
+		}
+		if err := fn(r); err != nil {
+			return err
+		}
+	}
+	im.progress("reading "+t.name, total, total, "bytes")
+	return im.ctx.Err()
+}
+
+func (im *importer) open(path string, t *table) (source, error) {
+	warn := func(s string) { im.warnf("%s", s) }
+	if strings.HasSuffix(path, ".parquet") {
+		return nil, errors.New("base: Parquet is not read yet")
+	}
+	s, err := openCSV(path, t, &im.problems, warn)
+	if s == nil { // a nil *csvSource is no nil source
+		return nil, err
+	}
+	return s, nil
+}
+
+// arrange decides ordinals and sorts everything into their order.
+func (im *importer) arrange() error {
+	n := int64(im.sv.len())
+	im.progress("arranging", 0, n, "supervoxels")
+	im.layout = newLayout(im.sv)
+	m, err := im.edges.sorted()
+	if err != nil {
+		return err
+	}
+	defer m.close()
+	var e treeEdge
+	for k := 0; ; k++ {
+		if err := im.alive(k); err != nil {
+			return err
+		}
+		ok, err := m.next(&e)
+		if err != nil {
+			return err
+		}
+		if !ok {
+			break
+		}
+		im.layout.join(e.a, e.b)
+	}
+	im.edges.drop()
+	im.layout.arrange()
+	im.countSegments()
+	im.progress("arranging", n/2, n, "supervoxels")
+	if err := im.placeContacts(); err != nil {
+		return err
+	}
+	if err := im.placeSynapses(); err != nil {
+		return err
+	}
+	im.placeNuclei()
+	im.info.Supervoxels, im.info.Segments = n, int64(len(im.segments))
+	im.info.Layout = layoutVersion
+	im.info.MintFrom, err = mintFrom(im.sv.ids, im.sv.segments)
+	im.progress("arranging", n, n, "supervoxels")
+	return err
+}
+
+// countSegments makes the table of base segments, all but synapses and nuclei.
+func (im *importer) countSegments() {
+	l := im.layout
+	im.segments = make([]segmentRecord, len(l.numbers))
+	for n, s := range l.numbers {
+		im.segments[n] = segmentRecord{id: im.sv.segments[s], lo: l.lo[n], box: emptyBox()}
+	}
+	n := -1
+	for g, r := range l.rank {
+		if n+1 < len(l.lo) && uint32(g) == l.lo[n+1] {
+			n++
+		}
+		seg := &im.segments[n]
+		seg.size++
+		seg.voxels += im.sv.voxels[r]
+		seg.box.add(im.sv.at[r])
+	}
+	parted := 0
+	for _, e := range l.assumed {
+		seg := im.segmentOf(l.ordinal[e[0]])
+		if seg.assumed++; seg.assumed == 1 {
+			parted++
+		}
+	}
+	im.info.Assumed = int64(len(l.assumed))
+	if parted > 0 {
+		im.warnf("%d base segments were not held together by their contacts; %d links to the nearest pieces were assumed", parted, len(l.assumed))
+	}
+}
+
+// segmentOf is the base segment of an ordinal.
+func (im *importer) segmentOf(g uint32) *segmentRecord {
+	n, found := slices.BinarySearch(im.layout.lo, g)
+	if !found {
+		n--
+	}
+	return &im.segments[n]
+}
+
+// mintRoom is how many ids must be free in a row for the ledger to mint from.
+const mintRoom = 1 << 32
+
+// mintFrom finds ids that were not delivered: the lowest multiple of 2^32 above 0 from which 2^32 are free. Both lists
+// ascend.
+func mintFrom(supervoxels, segments []uint64) (ID, error) {
+	next := uint64(1) // in units of mintRoom
+	for len(supervoxels) > 0 || len(segments) > 0 {
+		var id uint64
+		if len(segments) == 0 || len(supervoxels) > 0 && supervoxels[0] <= segments[0] {
+			id, supervoxels = supervoxels[0], supervoxels[1:]
+		} else {
+			id, segments = segments[0], segments[1:]
+		}
+		if id/mintRoom > next {
+			break
+		}
+		if id/mintRoom == next {
+			next++
+		}
+	}
+	if next >= mintRoom {
+		return 0, errors.New("base: no run of 2^32 free ids is left")
+	}
+	return ID(next * mintRoom), nil
+}

@@ -1,0 +1,24 @@
+package base
+
+import "time"
+
+// ImportOptions are the choices of whoever imports.
+type ImportOptions struct {
+	Name     string         // instead of the name in volume.json
+	Progress func(Progress) // told now and then, from the importing goroutine; may be nil
+	TempDir  string         // where sorting may keep files, as large as the contacts; the system's when empty
+}
+
+// Progress is how far an import has come.
+type Progress struct {
+	Stage       string // "reading contacts", "arranging", "storing" …
+	Done, Total int64  // Total 0: not known
+	Unit        string // "bytes", "supervoxels"
+}
+
+// Report is what an import did.
+type Report struct {
+	Info     Info
+	Warnings []string // what was odd but usable
+	Elapsed  time.Duration
+}
