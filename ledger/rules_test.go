@@ -245,7 +245,7 @@ func TestTheDatabaseItselfKeepsEntries(t *testing.T) {
 	for sql, constraint := range map[string]string{
 		`update entry set reason = 'something else'`:              "entry_is_final",
 		`delete from entry where position = 2`:                    "entry_is_final",
-		`truncate entry`:                                          "entry_is_final",
+		`truncate entry cascade`:                                  "entry_is_final",
 		`update entry set position = 7 where position = 2`:        "entry_is_final",
 		copyEntry(`position + 2`, `gen_random_uuid()`, "merge"):   "entry_gapless",
 		copyEntry(`position`, `gen_random_uuid()`, "merge"):       "entry_pkey",

@@ -34,6 +34,9 @@ func (v *Volume) explain(ctx context.Context, err error) error {
 	var changes []Change
 	seen := make(map[int64]bool)
 	for _, id := range stale.saw {
+		if _, err := v.Segment(ctx, id); err != nil {
+			return err // it never was a segment
+		}
 		became, between, lerr := v.descend(ctx, id)
 		if lerr != nil {
 			return errors.Join(err, lerr)

@@ -236,7 +236,7 @@ func (s *state) assign(lo, hi uint32, group, from int64) {
 	next = append(next, old[:i]...)
 	for _, r := range append(middle, old[j:]...) {
 		if k := len(next); k > 0 && r.from == 0 && next[k-1].from == 0 {
-			delete(s.membersOf(next[k-1].group), next[k-1].lo)
+			delete(s.membersOf(r.group), r.lo)
 			r.lo = next[k-1].lo
 			next = next[:k-1]
 		}

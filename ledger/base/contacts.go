@@ -1,7 +1,6 @@
 package base
 
 import (
-	"cmp"
 	"encoding/binary"
 	"fmt"
 	"math"
@@ -13,6 +12,9 @@ type contactRecord struct {
 	affinity, area float64
 	line           int64
 }
+
+// pairKey sorts by the first, then the second.
+func pairKey(a, b uint32) uint64 { return uint64(a)<<32 | uint64(b) }
 
 var contactRecords = record[contactRecord]{
 	size: 32,
@@ -29,9 +31,7 @@ var contactRecords = record[contactRecord]{
 		c.area = math.Float64frombits(binary.LittleEndian.Uint64(b[16:]))
 		c.line = int64(binary.LittleEndian.Uint64(b[24:]))
 	},
-	compare: func(x, y *contactRecord) int {
-		return cmp.Or(cmp.Compare(x.a, y.a), cmp.Compare(x.b, y.b), cmp.Compare(x.line, y.line))
-	},
+	key: func(c contactRecord) (uint64, uint64) { return pairKey(c.a, c.b), uint64(c.line) },
 }
 
 // supervoxel looks up a supervoxel that a row names.
@@ -142,7 +142,7 @@ var treeEdgeRecords = record[treeEdge]{
 	get: func(b []byte, e *treeEdge) {
 		*e = treeEdge{b[0], binary.LittleEndian.Uint64(b[1:]), binary.LittleEndian.Uint32(b[9:]), binary.LittleEndian.Uint32(b[13:])}
 	},
-	compare: compareTreeEdges,
+	key: treeEdge.key,
 }
 
 // halfRecord is a contact as one block lists it: under the end at.
@@ -165,7 +165,7 @@ var halfRecords = record[halfRecord]{
 	get: func(b []byte, h *halfRecord) {
 		*h = halfRecord{binary.LittleEndian.Uint32(b), binary.LittleEndian.Uint32(b[4:]), b[8], b[9], b[10] == 1}
 	},
-	compare: func(x, y *halfRecord) int { return cmp.Or(cmp.Compare(x.at, y.at), cmp.Compare(x.other, y.other)) },
+	key: func(h halfRecord) (uint64, uint64) { return pairKey(h.at, h.other), 0 },
 }
 
 // placeContacts sorts contacts and assumed links into the order of blocks.

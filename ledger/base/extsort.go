@@ -2,25 +2,27 @@ package base
 
 import (
 	"bufio"
+	"cmp"
 	"container/heap"
 	"io"
 	"os"
 	"slices"
 )
 
-// record is how a sorter keeps a T in a file: a fixed number of bytes.
+// record is how a sorter keeps a T in a file, a fixed number of bytes, and what it sorts by: two numbers, the first
+// before the second. Keys of different records must differ, or the result would depend on the order of adding.
 type record[T any] struct {
-	size    int
-	put     func([]byte, *T)
-	get     func([]byte, *T)
-	compare func(a, b *T) int
+	size int
+	put  func([]byte, *T)
+	get  func([]byte, *T)
+	key  func(T) (high, low uint64)
 }
 
 // sorterHolds is how many bytes of records a sorter holds before it writes a sorted run to a file.
 const sorterHolds = 32 << 20
 
 // sorter sorts any number of records in bounded memory: sorted runs in temporary files, merged while they are read
-// (the textbook's external merge sort). The order must be total for the result not to depend on the order of adding.
+// (the textbook's external merge sort).
 type sorter[T any] struct {
 	record[T]
 	dir  string
@@ -45,7 +47,14 @@ func (s *sorter[T]) add(x T) error {
 }
 
 func (s *sorter[T]) sortHeld() {
-	slices.SortFunc(s.hold, func(a, b T) int { return s.compare(&a, &b) })
+	slices.SortFunc(s.hold, func(a, b T) int {
+		aHigh, aLow := s.key(a)
+		bHigh, bLow := s.key(b)
+		if aHigh != bHigh {
+			return cmp.Compare(aHigh, bHigh)
+		}
+		return cmp.Compare(aLow, bLow)
+	})
 }
 
 func (s *sorter[T]) spill() (err error) {
@@ -125,6 +134,8 @@ type sortedRun[T any] struct {
 	r   *bufio.Reader
 	buf []byte
 	x   T
+
+	high, low uint64 // key of x
 }
 
 func (m *merged[T]) advance(r *sortedRun[T]) (bool, error) {
@@ -134,6 +145,7 @@ func (m *merged[T]) advance(r *sortedRun[T]) (bool, error) {
 		return false, err
 	}
 	m.get(r.buf, &r.x)
+	r.high, r.low = m.key(r.x)
 	return true, nil
 }
 
@@ -171,10 +183,13 @@ func (m *merged[T]) close() {
 }
 
 // The heap of runs by their first records.
-func (m *merged[T]) Len() int           { return len(m.live) }
-func (m *merged[T]) Less(i, j int) bool { return m.compare(&m.live[i].x, &m.live[j].x) < 0 }
-func (m *merged[T]) Swap(i, j int)      { m.live[i], m.live[j] = m.live[j], m.live[i] }
-func (m *merged[T]) Push(any)           { panic("base: a merge gains no runs") }
+func (m *merged[T]) Len() int      { return len(m.live) }
+func (m *merged[T]) Swap(i, j int) { m.live[i], m.live[j] = m.live[j], m.live[i] }
+func (m *merged[T]) Push(any)      { panic("base: a merge gains no runs") }
+func (m *merged[T]) Less(i, j int) bool {
+	a, b := m.live[i], m.live[j]
+	return a.high < b.high || a.high == b.high && a.low < b.low
+}
 func (m *merged[T]) Pop() any {
 	last := m.live[len(m.live)-1]
 	m.live = m.live[:len(m.live)-1]

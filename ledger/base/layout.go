@@ -16,9 +16,9 @@ type treeEdge struct {
 	a, b     uint32 // ranks, a < b
 }
 
-// compareTreeEdges puts the strongest first; of equally strong ones the shortest.
-func compareTreeEdges(x, y *treeEdge) int {
-	return cmp.Or(cmp.Compare(x.weakness, y.weakness), cmp.Compare(x.length2, y.length2), cmp.Compare(x.a, y.a), cmp.Compare(x.b, y.b))
+// key puts the strongest first; of equally strong ones the shortest, where all beyond 26 cm are alike.
+func (e treeEdge) key() (high, low uint64) {
+	return uint64(e.weakness)<<56 | min(e.length2, 1<<56-1), pairKey(e.a, e.b)
 }
 
 // layout decides the ordinals. A rank is the place of a supervoxel among all by id: what the order is computed from,

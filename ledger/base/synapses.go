@@ -38,9 +38,7 @@ var synapseRecords = record[synapseRecord]{
 		s.confidence = math.Float64frombits(binary.LittleEndian.Uint64(b[28:]))
 		s.transmitter = binary.LittleEndian.Uint16(b[36:])
 	},
-	compare: func(x, y *synapseRecord) int {
-		return cmp.Or(cmp.Compare(x.pre, y.pre), cmp.Compare(x.post, y.post), cmp.Compare(x.id, y.id))
-	},
+	key: func(s synapseRecord) (uint64, uint64) { return pairKey(s.pre, s.post), s.id },
 }
 
 // seenID is an id and where it was seen, to find duplicates by sorting.
@@ -58,7 +56,7 @@ var seenIDs = record[seenID]{
 	get: func(b []byte, s *seenID) {
 		s.id, s.line = binary.LittleEndian.Uint64(b), int64(binary.LittleEndian.Uint64(b[8:]))
 	},
-	compare: func(x, y *seenID) int { return cmp.Or(cmp.Compare(x.id, y.id), cmp.Compare(x.line, y.line)) },
+	key: func(s seenID) (uint64, uint64) { return s.id, uint64(s.line) },
 }
 
 // noteDuplicates tells of ids that are there more than once.
