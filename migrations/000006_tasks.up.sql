@@ -7,52 +7,57 @@
 -- Two locks keep that count right. Work on single claims takes the volume's queue lock shared, and then changes only
 -- the lines of segments whose leases it holds; what moves many tasks at once takes it alone.
 
+-- Where a task stands. These rows change at every step, so they are narrow and have few indexes and checks.
 create table task (
     volume_id   int              not null references volume (volume_id),
     number      bigint           not null,
-    task_id     uuid             not null,
-    place       text             not null,
-    family      text             not null,
-    kind        text             not null,
     state       text             not null default 'open',
-    segments    bigint[]         not null,
     waits       int              not null default 0,
+    head        boolean          not null generated always as (waits = 0 and assigned_to is null) stored,
     priority    double precision not null,
+    kind        text             not null,
+    family      text             not null,
+    segments    bigint[]         not null,
     assigned_to text             references person (handle),
     claim_id    uuid,
-    probability double precision not null,
-    gain        double precision not null,
-    minutes     double precision not null,
-    point_nm    double precision[] not null,
-    made_at     timestamptz      not null default now(),
-    said        text             not null,
-    findings    jsonb            not null,
-    proposal    jsonb,
     primary key (volume_id, number),
-    constraint task_once unique (task_id),
-    constraint task_number check (number > 0),
-    constraint task_kind check (kind in ('false-merge', 'false-split')),
-    constraint task_state check (state in ('open', 'claimed', 'resolved', 'accepted', 'returned', 'overtaken')),
-    constraint task_segments check (cardinality(segments) > 0 and array_position(segments, null) is null),
-    constraint task_waits check (waits >= 0),
-    constraint task_claim check (case state when 'open' then claim_id is null when 'overtaken' then true else claim_id is not null end),
-    constraint task_worth check (priority between 0 and 1e300 and gain between 0 and 1e300 and minutes between 0 and 1e300
-                             and probability between 0 and 1),
-    constraint task_point check (cardinality(point_nm) = 3)
-) with (fillfactor = 80, toast_tuple_target = 256);
--- Rows change state a few times in their life; what triage said of them does not, and stays out of line meanwhile.
-alter table task alter findings set storage external, alter proposal set storage external;
-comment on column task.place is 'triage''s key of the place, the same under changing segment ids';
+    constraint task_state check (case state when 'open' then claim_id is null when 'overtaken' then true
+                                      else claim_id is not null and state in ('claimed', 'resolved', 'accepted', 'returned') end),
+    constraint task_waits check (waits >= 0)
+) with (fillfactor = 70);
 comment on column task.segments is 'ascending as unsigned numbers, each once';
 comment on column task.waits is 'how many of its segments'' lines it is not the head of';
 comment on column task.priority is 'expected synapses put right, a minute';
 comment on column task.claim_id is 'the live claim, or the one that ended it';
 -- The queue itself: the heads that anybody may claim.
-create index task_ready on task (volume_id, priority desc, number) where state = 'open' and waits = 0 and assigned_to is null;
+create index task_ready on task (volume_id, priority desc, number) where state = 'open' and head;
 create index task_assigned on task (volume_id, assigned_to, priority desc, number) where state = 'open' and assigned_to is not null;
-create unique index task_one_a_place on task (volume_id, place) where state in ('open', 'claimed');
-create index task_place_done on task (volume_id, place) where state in ('resolved', 'accepted');
 create index task_to_review on task (volume_id, number) where state = 'resolved';
+
+-- What triage said of a task's place: written when the task is made, and again when it moves.
+create table task_place (
+    volume_id   int              not null,
+    number      bigint           not null,
+    task_id     uuid             not null,
+    place       text             not null,
+    latest      boolean          not null default true,
+    probability double precision not null,
+    gain        double precision not null,
+    minutes     double precision not null,
+    point_nm    double precision[] not null,
+    said        text             not null,
+    findings    jsonb            not null,
+    proposal    jsonb,
+    made_at     timestamptz      not null default now(),
+    primary key (volume_id, number),
+    constraint task_place_task foreign key (volume_id, number) references task (volume_id, number),
+    constraint task_place_id unique (task_id),
+    constraint task_place_worth check (gain between 0 and 1e300 and minutes between 0 and 1e300 and probability between 0 and 1),
+    constraint task_place_point check (cardinality(point_nm) = 3)
+);
+comment on column task_place.place is 'triage''s key of the place, the same under changing segment ids';
+comment on column task_place.latest is 'false once a newer task is about the same place';
+create unique index task_place_latest on task_place (volume_id, place) where latest;
 
 -- Who stands in a segment's line: its open tasks that nobody was assigned.
 create table task_line (
@@ -79,10 +84,10 @@ create table claim (
     constraint claim_once primary key (claim_id),
     constraint claim_task foreign key (volume_id, number) references task (volume_id, number),
     constraint claim_entry foreign key (volume_id, position) references entry (volume_id, position),
-    constraint claim_ended check (ended in ('resolved', 'released', 'expired', 'overtaken') and (ended is null) = (ended_at is null)),
-    constraint claim_outcome check (outcome in ('corrected', 'sound', 'unclear') and (ended is not distinct from 'resolved') = (outcome is not null)),
-    constraint claim_corrected check ((outcome is not distinct from 'corrected') = (position is not null)),
-    constraint claim_note check (length(note) <= 2000)
+    constraint claim_ended check (case when ended is null then ended_at is null and outcome is null
+                                       else ended_at is not null and case ended when 'resolved' then outcome in ('corrected', 'sound', 'unclear')
+                                       else ended in ('released', 'expired', 'overtaken') and outcome is null end end),
+    constraint claim_corrected check ((outcome is not distinct from 'corrected') = (position is not null))
 );
 comment on table claim is 'personal data: who worked on what, from when to when';
 comment on column claim.position is 'the entry that corrected it';
@@ -179,9 +184,10 @@ begin
     case old.state || ' > ' || new.state
     when 'open > claimed' then
         -- Held by a live claim, and every one of its segments leased to that claim.
-        select count(l.claim_id) = cardinality(new.segments) into fits
-          from claim c left join lease l on l.volume_id = new.volume_id and l.segment_id = any (new.segments) and l.claim_id = c.claim_id
-         where c.claim_id = new.claim_id and c.volume_id = new.volume_id and c.number = new.number and c.ended is null;
+        select c.ended is null and c.volume_id = new.volume_id and c.number = new.number
+           and (select count(*) from lease l where l.volume_id = new.volume_id and l.segment_id = any (new.segments)
+                                               and l.claim_id = new.claim_id) = cardinality(new.segments)
+          into fits from claim c where c.claim_id = new.claim_id;
     when 'claimed > open', 'claimed > overtaken' then
         fits := not exists (select from claim where claim_id = old.claim_id and ended is null);
     when 'claimed > resolved' then
@@ -195,17 +201,25 @@ begin
     else
         fits := false;
     end case;
-    if not fits then
+    if fits is not true then
         perform refuse('task_step', format('task %s can''t go from %s to %s now', new.number, old.state, new.state));
     end if;
     return new;
 end $$;
 create trigger task_step before update of state on task for each row when (old.state <> new.state) execute function task_step();
+
+-- What holds from the start, or from a move on, and need not be checked at every step.
 create function task_starts() returns trigger language plpgsql as $$
 begin
-    perform refuse('task_step', 'a task starts open');
+    if new.state <> 'open' and tg_op = 'INSERT' then
+        perform refuse('task_step', 'a task starts open');
+    elsif new.number < 1 or cardinality(new.segments) = 0 or array_position(new.segments, null) is not null
+       or new.kind not in ('false-merge', 'false-split') or not new.priority between 0 and 1e300 then
+        perform refuse('task_whole', format('task %s is not whole', new.number));
+    end if;
+    return new;
 end $$;
-create trigger task_starts before insert on task for each row when (new.state <> 'open') execute function task_starts();
+create trigger task_starts before insert or update of number, segments, kind, priority on task for each row execute function task_starts();
 
 -- The queue lock of a volume, until the transaction ends. 1952543595 spells "task".
 create function task_lock(volume int, alone boolean) returns void language plpgsql as $$
@@ -221,12 +235,12 @@ create function task_note(volume int, task_number bigint, who text, what text, n
     insert into task_event (volume_id, number, person, what, note) values (volume, task_number, who, what, note);
 $$;
 
--- Claims the task wanted, or the best that this person may have, and returns it; null when there is none. One
--- assigned to them goes before all others.
-create function task_claim(volume int, who text, wanted bigint, kinds text[], families text[], id uuid, lasts interval)
-returns task language plpgsql as $$
+-- Claims the task wanted, or the best that this person may have, and returns it with the claim; nulls when there is
+-- none. One assigned to them goes before all others.
+create function task_claim(volume int, who text, wanted bigint, kinds text[], families text[], id uuid, lasts interval,
+                           out t task, out c claim)
+language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off as $$
 declare
-    t     task;
     alone boolean := wanted is not null
                   or exists (select from task x where x.volume_id = volume and x.assigned_to = who and x.state = 'open');
 begin
@@ -245,15 +259,15 @@ begin
     end if;
     if t.number is null then
         select * into t from task x
-         where x.volume_id = volume and x.state = 'open' and x.waits = 0 and x.assigned_to is null
+         where x.volume_id = volume and x.state = 'open' and x.head
            and (kinds is null or x.kind = any (kinds)) and (families is null or x.family = any (families))
            and not exists (select from segment g where g.volume_id = volume and g.segment_id = any (x.segments) and g.retired is not null)
          order by x.priority desc, x.number limit 1 for update of x skip locked;
     end if;
     if t.number is null then
-        return null;
+        return;
     end if;
-    insert into claim (claim_id, volume_id, number, person, until) values (id, volume, t.number, who, now() + lasts);
+    insert into claim (claim_id, volume_id, number, person, until) values (id, volume, t.number, who, now() + lasts) returning * into c;
     insert into lease (volume_id, segment_id, claim_id) select volume, s, id from unnest(t.segments) s;
     if t.assigned_to is null then
         delete from task_line l where l.volume_id = volume and l.segment_id = any (t.segments) and l.priority = t.priority and l.number = t.number;
@@ -261,8 +275,7 @@ begin
         perform heads_wait(t);
     end if;
     update task x set state = 'claimed', claim_id = id where x.volume_id = volume and x.number = t.number returning * into t;
-    perform task_note(volume, t.number, who, 'claimed', '');
-    return t;
+    insert into task_event (volume_id, number, person, what) values (volume, t.number, who, 'claimed');
 end $$;
 
 -- Makes the heads wait of lines whose segments were leased to a task that does not stand in them.
@@ -398,21 +411,23 @@ begin
     end if;
 end $$;
 
--- Ends a claim with an outcome. of_entry and changed are the position of the correction and the segments it changes.
-create function claim_resolve(id uuid, who text, how text, why text, of_entry bigint, changed bigint[]) returns void language plpgsql as $$
-declare
-    c claim := claim_held(id, who);
-    t task;
+-- Ends a claim with an outcome, and returns the task and the claim. of_entry and changed are the position of the
+-- correction and the segments it changes.
+create function claim_resolve(id uuid, who text, how text, why text, of_entry bigint, changed bigint[], out t task, out c claim)
+language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off as $$
 begin
-    select * into t from task x where x.volume_id = c.volume_id and x.number = c.number for update;
-    if not changed && t.segments then
-        perform refuse('claim_corrects', 'the correction changes none of the task''s segments');
+    c := claim_held(id, who);
+    update claim set ended = 'resolved', ended_at = now(), outcome = how, note = why, position = of_entry
+     where claim_id = id returning * into c;
+    update task x set state = 'resolved' where x.volume_id = c.volume_id and x.number = c.number returning * into t;
+    if of_entry is not null then
+        if not changed && t.segments then
+            perform refuse('claim_corrects', 'the correction changes none of the task''s segments');
+        end if;
+        perform segments_unheld(c.volume_id, who, changed);
     end if;
-    perform segments_unheld(c.volume_id, who, changed);
-    update claim set ended = 'resolved', ended_at = now(), outcome = how, note = why, position = of_entry where claim_id = id;
     perform lease_end(id, t, null);
-    update task x set state = 'resolved' where x.volume_id = t.volume_id and x.number = t.number;
-    perform task_note(t.volume_id, t.number, who, 'resolved', how);
+    insert into task_event (volume_id, number, person, what, note) values (c.volume_id, c.number, who, 'resolved', how);
 end $$;
 
 -- Stores what a second person said. reversal is the position of the entry that undid a returned correction, and

@@ -21,9 +21,7 @@ type ClaimOptions struct {
 }
 
 // claimSQL is the hot statement: one call finds a task, leases its segments and claims it. See task_claim.
-const claimSQL = `
-	select ` + taskColumns + `, t.claim_id, now(), now() + $7
-	  from task_claim($1, $2, nullif($3, 0), $4, $5, $6, $7) t where t.number is not null`
+const claimSQL = wholeTask + ` from task_claim($1, $2, nullif($3, 0), $4, $5, $6, $7) f` + ofFunction
 
 // Claim takes the best task that this person may have, those assigned to them first, or the one named. Nothing left:
 // fault.NotFound "queue-empty". A person holds one task of a volume at a time; a second is fault.Conflict, and names
@@ -40,8 +38,8 @@ func (q *Queue) Claim(ctx context.Context, volume string, p Person, opt ClaimOpt
 		return Task{}, fault.New(fault.Invalid, "claim-id", "a claim needs an id of its own, so that a repeat is recognised").WithField("id")
 	}
 	for range patience {
-		t, err := q.claim(ctx, id, volume, p, opt)
-		if pg.Code(err) == "40P01" {
+		t, err := queryOne(ctx, q.pool, claimSQL, id, p.Handle, opt.Task, opt.Kinds, opt.Families, opt.ID, q.Lease)
+		if pg.Code(err) == deadlock {
 			continue
 		}
 		if !errors.Is(err, pgx.ErrNoRows) && pg.Constraint(err) == "" {
@@ -62,18 +60,6 @@ func (q *Queue) Claim(ctx context.Context, volume string, p Person, opt ClaimOpt
 		}
 	}
 	return Task{}, queueBusy()
-}
-
-func (q *Queue) claim(ctx context.Context, id int32, volume string, p Person, opt ClaimOptions) (Task, error) {
-	t, c := Task{Volume: volume}, Claim{Person: p.Handle}
-	err := q.pool.QueryRow(ctx, claimSQL, id, p.Handle, opt.Task, opt.Kinds, opt.Families, opt.ID, q.Lease).
-		Scan(append(t.targets(), &c.ID, &c.At, &c.Until)...)
-	if err != nil {
-		return Task{}, err
-	}
-	c.Task = t.Number
-	t.Claim = &c
-	return t, nil
 }
 
 // repeat answers a request whose claim exists: the task, as it is now.
@@ -110,7 +96,7 @@ func (q *Queue) Held(ctx context.Context, volume string, p Person) ([]Task, erro
 	if err != nil {
 		return nil, err
 	}
-	return query(ctx, q.pool, wholeTask+` and c.volume_id = $1 and c.person = $2 and c.ended is null`, id, p.Handle)
+	return query(ctx, q.pool, selectTasks+` and c.volume_id = $1 and c.person = $2 and c.ended is null`, id, p.Handle)
 }
 
 // foundClaim is a claim with what it has to be held against.
@@ -132,6 +118,22 @@ func (q *Queue) findClaim(ctx context.Context, id uuid.UUID) (c foundClaim, foun
 		return c, false, nil
 	}
 	return c, err == nil, err
+}
+
+// heldClaim is a claim that is live and this person's.
+func (q *Queue) heldClaim(ctx context.Context, p Person, id uuid.UUID) (foundClaim, error) {
+	c, found, err := q.findClaim(ctx, id)
+	switch {
+	case err != nil:
+		return c, err
+	case !found:
+		return c, unknownClaim(id)
+	case c.Person != p.Handle:
+		return c, claimOfAnother()
+	case c.Ended != "":
+		return c, claimEnded(c)
+	}
+	return c, nil
 }
 
 // liveClaim explains why a claim could not be used by this person; other errors pass as they are.

@@ -63,7 +63,7 @@ func (q *Queue) settleIn(ctx context.Context, made int, err error) error {
 	if err != nil || made < manyMade {
 		return err
 	}
-	_, err = q.pool.Exec(ctx, `analyze task, task_line`)
+	_, err = q.pool.Exec(ctx, `analyze task, task_place, task_line`)
 	return err
 }
 

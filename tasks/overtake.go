@@ -90,10 +90,10 @@ func liveTasks(ctx context.Context, tx pgx.Tx, volume int32, n news) ([]live, er
 		     union
 		     select number from task where volume_id = $1 and state = 'open' and assigned_to is not null and segments && $2
 		     union
-		     select number from task where volume_id = $1 and state in ('open', 'claimed') and place = any ($3))
-		select t.number, t.place, t.segments, t.priority, t.state = 'open' and t.assigned_to is null, t.claim_id
-		  from concerned join task t on t.volume_id = $1 and t.number = concerned.number
-		 where t.state in ('open', 'claimed') order by t.number`, volume, n.retired, slices.Collect(maps.Keys(n.places)))
+		     select number from task_place where volume_id = $1 and place = any ($3) and latest)
+		select t.number, p.place, t.segments, t.priority, t.state = 'open' and t.assigned_to is null, t.claim_id
+		  from concerned join task t using (number) join task_place p using (volume_id, number)
+		 where volume_id = $1 and t.state in ('open', 'claimed') order by number`, volume, n.retired, slices.Collect(maps.Keys(n.places)))
 	if err != nil {
 		return nil, err
 	}
@@ -147,11 +147,11 @@ func move(ctx context.Context, tx pgx.Tx, volume int32, n news, moved []live) (j
 			return nil, err
 		}
 		var b pgx.Batch
+		b.Queue(`update task set segments = $3, priority = $4 where volume_id = $1 and number = $2`, volume, t.number, p.Segments, p.Priority)
 		b.Queue(`
-			update task set segments = $3, priority = $4, probability = $5, gain = $6, minutes = $7, point_nm = $8, said = $9,
-			       findings = $10, proposal = $11
+			update task_place set probability = $3, gain = $4, minutes = $5, point_nm = $6, said = $7, findings = $8, proposal = $9
 			 where volume_id = $1 and number = $2`,
-			volume, t.number, p.Segments, p.Priority, p.Probability, p.Gain, p.Minutes, p.Point, p.Said, findings, proposal)
+			volume, t.number, p.Probability, p.Gain, p.Minutes, p.Point, p.Said, findings, proposal)
 		if !slices.Equal(p.Segments, t.segments) {
 			b.Queue(`insert into task_event (volume_id, number, what, note) values ($1, $2, 'moved', $3)`, volume, t.number, n.why(t))
 		}
@@ -174,8 +174,8 @@ func move(ctx context.Context, tx pgx.Tx, volume int32, n news, moved []live) (j
 // unsettled leaves away the places that somebody found sound or unclear, and was not returned.
 func unsettled(ctx context.Context, tx pgx.Tx, volume int32, places map[string]triage.Place) ([]triage.Place, error) {
 	rows, err := tx.Query(ctx, `
-		select t.place from task t join claim c using (claim_id)
-		 where t.volume_id = $1 and t.state in ('resolved', 'accepted') and t.place = any ($2) and c.outcome in ('sound', 'unclear')`,
+		select p.place from task_place p join task t using (volume_id, number) join claim c using (claim_id)
+		 where p.volume_id = $1 and p.place = any ($2) and p.latest and t.state in ('resolved', 'accepted') and c.outcome in ('sound', 'unclear')`,
 		volume, slices.Collect(maps.Keys(places)))
 	if err != nil {
 		return nil, err

@@ -27,11 +27,8 @@ func segmentSet(ids []ledger.ID) []ledger.ID {
 	return slices.Compact(out)
 }
 
-var madeColumns = []string{"volume_id", "number", "task_id", "place", "family", "kind", "segments", "priority",
-	"probability", "gain", "minutes", "point_nm", "said", "findings", "proposal"}
-
 // makeTasks stores new open tasks, numbered on from the last, best first. They don't stand in their lines yet. The
-// caller has the queue lock alone.
+// caller has the queue lock alone, and no live task is about any of the places.
 func makeTasks(ctx context.Context, tx pgx.Tx, volume int32, places []triage.Place, why string) ([]int64, error) {
 	if len(places) == 0 {
 		return nil, nil
@@ -42,18 +39,32 @@ func makeTasks(ctx context.Context, tx pgx.Tx, volume int32, places []triage.Pla
 	}
 	places = slices.Clone(places)
 	slices.SortStableFunc(places, better)
-	numbers := make([]int64, len(places))
-	_, err := tx.CopyFrom(ctx, pgx.Identifier{"task"}, madeColumns, pgx.CopyFromSlice(len(places), func(i int) ([]any, error) {
-		p := places[i]
-		numbers[i] = last + 1 + int64(i)
-		id, err := uuid.NewV7()
-		if err != nil {
-			return nil, err
-		}
-		findings, proposal, err := evidence(p)
-		return []any{volume, numbers[i], id, p.Key, p.Family, p.Kind, segmentSet(p.Segments), p.Priority,
-			p.Probability, p.Gain, p.Minutes, p.Point, p.Said, findings, proposal}, err
-	}))
+	numbers, keys := make([]int64, len(places)), make([]string, len(places))
+	for i, p := range places {
+		numbers[i], keys[i] = last+1+int64(i), p.Key
+	}
+	if _, err := tx.Exec(ctx, `update task_place set latest = false where volume_id = $1 and place = any ($2) and latest`, volume, keys); err != nil {
+		return nil, err
+	}
+	_, err := tx.CopyFrom(ctx, pgx.Identifier{"task"}, []string{"volume_id", "number", "priority", "kind", "family", "segments"},
+		pgx.CopyFromSlice(len(places), func(i int) ([]any, error) {
+			p := places[i]
+			return []any{volume, numbers[i], p.Priority, p.Kind, p.Family, segmentSet(p.Segments)}, nil
+		}))
+	if err != nil {
+		return nil, err
+	}
+	_, err = tx.CopyFrom(ctx, pgx.Identifier{"task_place"},
+		[]string{"volume_id", "number", "task_id", "place", "probability", "gain", "minutes", "point_nm", "said", "findings", "proposal"},
+		pgx.CopyFromSlice(len(places), func(i int) ([]any, error) {
+			p := places[i]
+			id, err := uuid.NewV7()
+			if err != nil {
+				return nil, err
+			}
+			findings, proposal, err := evidence(p)
+			return []any{volume, numbers[i], id, p.Key, p.Probability, p.Gain, p.Minutes, p.Point, p.Said, findings, proposal}, err
+		}))
 	if err != nil {
 		return nil, err
 	}

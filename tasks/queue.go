@@ -53,11 +53,14 @@ func (q *Queue) volume(ctx context.Context, name string) (int32, error) {
 // rows in one order; a group of entries with several resolutions in it may not.
 const patience = 3
 
+// deadlock is PostgreSQL's code for having been chosen so.
+const deadlock = "40P01"
+
 // again runs a transaction, and runs it again if it was chosen to break a deadlock.
 func again(fn func() error) error {
 	var err error
 	for range patience {
-		if err = fn(); pg.Code(err) != "40P01" {
+		if err = fn(); pg.Code(err) != deadlock {
 			break
 		}
 	}

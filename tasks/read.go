@@ -4,6 +4,7 @@ import (
 	"context"
 	"encoding/base64"
 	"encoding/binary"
+	"errors"
 	"fmt"
 	"math"
 	"strings"
@@ -35,26 +36,30 @@ const (
 	largestPage = 1000
 )
 
-const taskColumns = `
-	t.number, t.task_id, t.place, t.family, t.kind, t.state, t.segments, t.waits, t.priority, coalesce(t.assigned_to, ''),
-	t.probability, t.gain, t.minutes, t.point_nm, t.made_at, t.said, t.findings, t.proposal`
-
-// wholeTask is every column that scanTask reads. $1 is the volume; conditions are added.
+// wholeTask are the columns that scanTask reads: a task t, its place p, its claim c, its review r, its volume v.
 const wholeTask = `
-	select ` + taskColumns + `,
+	select t.number, p.task_id, p.place, t.family, t.kind, t.state, t.segments, t.waits, t.priority, coalesce(t.assigned_to, ''),
+	       p.probability, p.gain, p.minutes, p.point_nm, p.made_at, p.said, p.findings, p.proposal,
 	       c.claim_id, c.person, c.claimed_at, c.until, c.ended_at, c.ended, c.outcome, c.note, c.position,
-	       r.person, r.verdict, r.note, r.reviewed_at, r.position, v.name
+	       r.person, r.verdict, r.note, r.reviewed_at, r.position, v.name`
+
+// selectTasks reads tasks of the volume $1; conditions are added.
+const selectTasks = wholeTask + `
 	  from task t
+	  join task_place p using (volume_id, number)
 	  join volume v using (volume_id)
 	  left join claim c on c.claim_id = t.claim_id
 	  left join review r on r.claim_id = t.claim_id
 	 where t.volume_id = $1`
 
-// taskTargets are where taskColumns go.
-func (t *Task) targets() []any {
-	return []any{&t.Number, &t.ID, &t.Key, &t.Family, &t.Kind, &t.State, &t.Segments, &t.Waits, &t.Priority, &t.AssignedTo,
-		&t.Probability, &t.Gain, &t.Minutes, &t.Point, &t.MadeAt, &t.Said, &t.Findings, &t.Proposal}
-}
+// ofFunction reads the task and the claim that a function returns, since a query can't see in the tables what
+// a function that it calls has just written there.
+const ofFunction = `
+	 cross join lateral (select (f.t).*) t
+	 cross join lateral (select (f.c).*) c
+	  join task_place p on p.volume_id = t.volume_id and p.number = t.number
+	  join volume v on v.volume_id = t.volume_id
+	  left join review r on r.claim_id = t.claim_id`
 
 func scanTask(row pgx.CollectableRow) (Task, error) {
 	var t Task
@@ -62,8 +67,10 @@ func scanTask(row pgx.CollectableRow) (Task, error) {
 	var person, ended, outcome, note, reviewer, verdict, remark *string
 	var at, until, endedAt, reviewedAt *time.Time
 	var entry, reversal *int64
-	err := row.Scan(append(t.targets(), &claim, &person, &at, &until, &endedAt, &ended, &outcome, &note, &entry,
-		&reviewer, &verdict, &remark, &reviewedAt, &reversal, &t.Volume)...)
+	err := row.Scan(&t.Number, &t.ID, &t.Key, &t.Family, &t.Kind, &t.State, &t.Segments, &t.Waits, &t.Priority, &t.AssignedTo,
+		&t.Probability, &t.Gain, &t.Minutes, &t.Point, &t.MadeAt, &t.Said, &t.Findings, &t.Proposal,
+		&claim, &person, &at, &until, &endedAt, &ended, &outcome, &note, &entry,
+		&reviewer, &verdict, &remark, &reviewedAt, &reversal, &t.Volume)
 	if err != nil || claim == nil {
 		return t, err
 	}
@@ -95,14 +102,11 @@ func (q *Queue) Get(ctx context.Context, volume string, number int64) (Task, err
 }
 
 func (q *Queue) get(ctx context.Context, db pg.DB, volume int32, number int64) (Task, error) {
-	ts, err := query(ctx, db, wholeTask+` and t.number = $2`, volume, number)
-	if err != nil {
-		return Task{}, err
+	t, err := queryOne(ctx, db, selectTasks+` and t.number = $2`, volume, number)
+	if errors.Is(err, pgx.ErrNoRows) {
+		err = unknownTask(number)
 	}
-	if len(ts) == 0 {
-		return Task{}, unknownTask(number)
-	}
-	return ts[0], nil
+	return t, err
 }
 
 func unknownTask(number int64) error {
@@ -117,13 +121,22 @@ func query(ctx context.Context, db pg.DB, sql string, args ...any) ([]Task, erro
 	return pgx.CollectRows(rows, scanTask)
 }
 
+// queryOne reads one task; pgx.ErrNoRows when there is none.
+func queryOne(ctx context.Context, db pg.DB, sql string, args ...any) (Task, error) {
+	rows, err := db.Query(ctx, sql, args...)
+	if err != nil {
+		return Task{}, err
+	}
+	return pgx.CollectExactlyOneRow(rows, scanTask)
+}
+
 // List lists tasks, best first, a page at a time; next is "" at the end.
 func (q *Queue) List(ctx context.Context, volume string, f Filter) (page []Task, next string, err error) {
 	id, err := q.volume(ctx, volume)
 	if err != nil {
 		return nil, "", err
 	}
-	sql, args := wholeTask, []any{id}
+	sql, args := selectTasks, []any{id}
 	where := func(cond string, values ...any) {
 		for _, v := range values {
 			args = append(args, v)

@@ -52,79 +52,80 @@ func (q *Queue) Resolve(ctx context.Context, p Person, claim uuid.UUID, r Resolv
 	if err := r.check(); err != nil {
 		return Task{}, nil, err
 	}
-	c, found, err := q.findClaim(ctx, claim)
-	if err != nil {
-		return Task{}, nil, err
-	}
-	if found && c.Person == p.Handle && c.Ended == "" {
-		err = q.resolve(ctx, p, c, r)
-		c, found, err = q.after(ctx, claim, err)
-	}
-	switch {
-	case !found:
-		return Task{}, nil, unknownClaim(claim)
-	case c.Person != p.Handle:
-		return Task{}, nil, claimOfAnother()
-	case c.Ended == EndedResolved && c.outcome == r.Outcome:
-		return q.resolved(ctx, c)
-	case err != nil:
-		return Task{}, nil, err
-	}
-	return Task{}, nil, claimEnded(c)
-}
-
-// after looks a claim up again once an attempt to end it is over, so that an attempt whose answer was lost counts.
-func (q *Queue) after(ctx context.Context, claim uuid.UUID, attempt error) (foundClaim, bool, error) {
-	if pg.Constraint(attempt) == "claim_live" {
-		attempt = nil
-	}
-	c, found, err := q.findClaim(ctx, claim)
-	return c, found, errors.Join(attempt, err)
-}
-
-func (q *Queue) resolve(ctx context.Context, p Person, c foundClaim, r Resolve) error {
 	if err := onlyFor(p, "resolve tasks", Proofreader); err != nil {
-		return err
+		return Task{}, nil, err
 	}
+	t, entry, err := q.resolve(ctx, p, claim, r)
+	if err == nil {
+		return t, entry, nil
+	}
+	// It may have been resolved before, or just now by an attempt whose answer was lost.
+	c, found, ferr := q.findClaim(ctx, claim)
+	switch {
+	case ferr != nil:
+		return Task{}, nil, errors.Join(err, ferr)
+	case found && c.Person == p.Handle && c.Ended == EndedResolved && c.outcome == r.Outcome:
+		return q.resolved(ctx, c)
+	}
+	return Task{}, nil, q.liveClaim(ctx, claim, err)
+}
+
+const resolveSQL = wholeTask + ` from claim_resolve($1, $2, $3, $4, null, null) f` + ofFunction
+
+func (q *Queue) resolve(ctx context.Context, p Person, claim uuid.UUID, r Resolve) (t Task, e *ledger.Entry, err error) {
 	if r.Outcome == Corrected {
-		return q.correct(ctx, p, c, r)
+		return q.correct(ctx, p, claim, r)
 	}
-	return again(func() error {
-		_, err := q.pool.Exec(ctx, `select claim_resolve($1, $2, $3, $4, null, null)`, c.ID, p.Handle, r.Outcome, r.Note)
+	err = again(func() error {
+		t, err = queryOne(ctx, q.pool, resolveSQL, claim, p.Handle, r.Outcome, r.Note)
 		return err
 	})
+	return t, nil, err
 }
 
 // correct posts the correction of a claim's task. The entry gets the claim's id, so that the same request again finds
 // it instead of posting it twice.
-func (q *Queue) correct(ctx context.Context, p Person, c foundClaim, r Resolve) error {
+func (q *Queue) correct(ctx context.Context, p Person, claim uuid.UUID, r Resolve) (Task, *ledger.Entry, error) {
+	c, err := q.heldClaim(ctx, p, claim)
+	if err != nil {
+		return Task{}, nil, err
+	}
 	v, err := q.led.Volume(ctx, c.name)
 	if err != nil {
-		return err
+		return Task{}, nil, err
 	}
 	t, err := q.get(ctx, q.pool, c.volume, c.Task)
 	if err != nil {
-		return err
+		return Task{}, nil, err
 	}
 	d := *r.Draft
-	d.ID, d.Person, d.Task, d.Reversal = c.ID, p.Handle, &t.ID, nil
+	d.ID, d.Person, d.Task, d.Reversal = claim, p.Handle, &t.ID, nil
 	if d.Reason == "" {
 		d.Reason = r.Note
 	}
-	_, err = v.Post(ctx, d, ledger.Companion{
-		SQL: `select claim_resolve($1, $2, 'corrected', $3, $4, $5)`,
+	e, err := v.Post(ctx, d, ledger.Companion{
+		SQL: `select from claim_resolve($1, $2, 'corrected', $3, $4, $5)`,
 		Args: func(position int64) []any {
-			return []any{c.ID, p.Handle, r.Note, position, d.Expected}
+			return []any{claim, p.Handle, r.Note, position, d.Expected}
 		},
 	})
-	switch pg.Constraint(err) {
-	case "segment_held":
-		return q.segmentHeld(ctx, c.volume, p, d.Expected, err)
-	case "claim_corrects":
-		return fault.Newf(fault.Conflict, "correction-elsewhere", "the correction changes none of the segments of task %d", t.Number).
+	switch {
+	case pg.Constraint(err) == "segment_held":
+		return Task{}, nil, q.segmentHeld(ctx, c.volume, p, d.Expected, err)
+	case pg.Constraint(err) == "claim_corrects":
+		return Task{}, nil, fault.Newf(fault.Conflict, "correction-elsewhere", "the correction changes none of the segments of task %d", t.Number).
 			WithNext("post it outside of the task, and resolve the task by what is true of its own segments").Wrap(err)
+	case err != nil:
+		return Task{}, nil, err
 	}
-	return err
+	if t, err = q.get(ctx, q.pool, c.volume, c.Task); err != nil {
+		return Task{}, nil, err
+	}
+	if t.Resolution == nil || t.Resolution.Position != e.Position {
+		return Task{}, nil, fault.Newf(fault.Conflict, "entry-id-taken", "claim id %s is the id of an entry that is not this claim's", claim).
+			WithNext("release the task, and claim it again under a new id")
+	}
+	return t, &e, nil
 }
 
 // resolved is the answer to a resolution that is stored.

@@ -29,7 +29,7 @@ func (q *Queue) ToReview(ctx context.Context, volume string, p Person, limit int
 	if limit <= 0 {
 		limit = defaultPage
 	}
-	return query(ctx, q.pool, wholeTask+` and t.state = 'resolved' and c.person <> $2 order by c.ended_at, t.number limit $3`,
+	return query(ctx, q.pool, selectTasks+` and t.state = 'resolved' and c.person <> $2 order by c.ended_at, t.number limit $3`,
 		id, p.Handle, min(limit, largestPage))
 }
 
@@ -153,7 +153,8 @@ func (q *Queue) placeNow(ctx context.Context, id int32, t Task, followed int64) 
 	var stale, live bool
 	err := q.pool.QueryRow(ctx, `
 		select exists (select from segment where volume_id = $1 and segment_id = any ($2) and retired <= $3),
-		       exists (select from task where volume_id = $1 and place = $4 and state in ('open', 'claimed'))`,
+		       exists (select from task_place join task using (volume_id, number)
+		                where volume_id = $1 and place = $4 and latest and state in ('open', 'claimed'))`,
 		id, t.Segments, followed, t.Key).Scan(&stale, &live)
 	switch {
 	case err != nil || live:

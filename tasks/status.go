@@ -48,8 +48,8 @@ func (q *Queue) Status(ctx context.Context, volume string) (QueueStatus, error) 
 		return s, err
 	}
 	rows, _ = q.pool.Query(ctx, `
-		select kind, family, count(*), count(*) filter (where waits = 0 and assigned_to is null), count(assigned_to), sum(minutes), sum(gain)
-		  from task where volume_id = $1 and state = 'open' group by kind, family order by sum(minutes) desc, kind, family`, id)
+		select kind, family, count(*), count(*) filter (where head), count(assigned_to), sum(minutes), sum(gain)
+		  from task join task_place using (volume_id, number) where volume_id = $1 and state = 'open' group by kind, family order by sum(minutes) desc, kind, family`, id)
 	if s.Open, err = pgx.CollectRows(rows, pgx.RowToStructByPos[OpenKind]); err != nil {
 		return s, err
 	}
