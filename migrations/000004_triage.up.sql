@@ -21,6 +21,7 @@ create table finding (
     evidence    jsonb            not null,
     said        text             not null,
     probability double precision not null,
+    moves       double precision not null,
     gain        double precision not null,
     proposal    jsonb,
     made        bigint           not null,

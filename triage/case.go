@@ -18,6 +18,8 @@ type Case struct {
 	*base.View
 	Sizes   stats.Robust // natural logarithms of voxel counts of the volume's segments of some size
 	SizesOK bool
+	Other   func(ledger.ID) (ledger.Segment, bool)  // what is known of another current segment
+	Place   func(ordinal uint32) (base.Point, bool) // where a supervoxel of another segment is
 
 	start []int32
 	arcs  []base.Arc
@@ -28,7 +30,10 @@ type Case struct {
 
 // NewCase prepares a segment. What several detectors need is computed when the first asks for it.
 func NewCase(w *base.View, sizes stats.Robust, sizesOK bool) *Case {
-	c := &Case{View: w, Sizes: sizes, SizesOK: sizesOK, edges: ledger.Edgelist(w)}
+	c := &Case{View: w, Sizes: sizes, SizesOK: sizesOK, edges: ledger.Edgelist(w),
+		Other: func(ledger.ID) (ledger.Segment, bool) { return ledger.Segment{}, false },
+		Place: func(uint32) (base.Point, bool) { return base.Point{}, false },
+	}
 	c.start, c.arcs = w.Adjacency()
 	c.tree = sync.OnceValue(func() *tree { return growTree(c) })
 	c.weak = sync.OnceValue(func() []weakPlace { return findWeak(c) })
