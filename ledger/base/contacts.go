@@ -49,7 +49,7 @@ func (im *importer) readContacts() error {
 	t := contactTable
 	im.contacts = newSorter(im.tmp, contactRecords)
 	return im.each(t, func(r *row) error {
-		if r.bad {
+		if r.bad() {
 			return nil
 		}
 		affinity, area := r.cells[2].number, r.cells[3].number

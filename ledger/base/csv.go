@@ -20,8 +20,6 @@ const longestLine = 1 << 20
 // and doubled quotes; it ends on its line. Empty lines are passed over.
 type csvSource struct {
 	table    *table
-	problems *problems
-	warn     func(string)
 	closers  []io.Closer
 	counted  *countingReader
 	in       *bufio.Reader
@@ -30,6 +28,7 @@ type csvSource struct {
 	fields   [][]byte
 	unquoted []byte
 	crlf     bool
+	over     bool
 }
 
 // openCSV opens a file and reads its header. nil: the header does not do, and the problems are noted.
@@ -38,7 +37,7 @@ func openCSV(path string, t *table, p *problems, warn func(string)) (*csvSource,
 	if err != nil {
 		return nil, err
 	}
-	s := &csvSource{table: t, problems: p, warn: warn, closers: []io.Closer{f}, counted: &countingReader{r: f}}
+	s := &csvSource{table: t, closers: []io.Closer{f}, counted: &countingReader{r: f}}
 	var in io.Reader = s.counted
 	if strings.HasSuffix(path, ".gz") {
 		z, err := gzip.NewReader(bufio.NewReaderSize(s.counted, 1<<16))
@@ -50,28 +49,35 @@ func openCSV(path string, t *table, p *problems, warn func(string)) (*csvSource,
 		in = z
 	}
 	s.in = bufio.NewReaderSize(in, longestLine)
-	if !s.header() {
+	if !s.header(p, warn) {
 		s.close()
 		return nil, nil
 	}
 	return s, nil
 }
 
-func (s *csvSource) header() bool {
+func (s *csvSource) header(p *problems, warn func(string)) bool {
 	if mark, _ := s.in.Peek(3); bytes.Equal(mark, []byte("\xef\xbb\xbf")) {
 		s.in.Discard(3) //nolint:errcheck // they were just seen
-		s.warn(s.table.name + " begins with a byte-order mark")
+		warn(s.table.name + " begins with a byte-order mark")
 	}
-	fields, ok := s.read()
-	if !ok {
-		s.problems.add(s.table.name, 0, "", "", "has no header row")
+	line, reason := s.readLine()
+	if line == nil && reason == "" {
+		reason = "has no header row"
+	}
+	if reason == "" {
+		s.fields, s.unquoted, reason = splitLine(line, s.fields[:0], s.unquoted[:0])
+	}
+	if reason != "" {
+		p.add(s.table.name, s.line, "", "", reason)
 		return false
 	}
-	names := make([]string, len(fields))
-	for i, f := range fields {
+	names := make([]string, len(s.fields))
+	for i, f := range s.fields {
 		names[i] = string(f)
 	}
-	s.columns, ok = matchColumns(s.table, names, s.line, s.problems, s.warn)
+	var ok bool
+	s.columns, ok = matchColumns(s.table, names, s.line, p, warn)
 	return ok
 }
 
@@ -101,66 +107,70 @@ func matchColumns(t *table, names []string, line int64, p *problems, warn func(s
 }
 
 func (s *csvSource) next(r *row) bool {
-	fields, ok := s.read()
-	if !ok {
+	line, reason := s.readLine()
+	if line == nil && reason == "" {
 		return false
 	}
-	r.line, r.bad = s.line, false
-	if len(fields) != len(s.columns) {
-		s.problems.add(s.table.name, s.line, "", "", "has "+strconv.Itoa(len(fields))+" fields where the header has "+strconv.Itoa(len(s.columns)))
-		r.bad = true
-		return true
+	r.line, r.faults = s.line, r.faults[:0]
+	clear(r.cells)
+	if reason == "" {
+		s.fields, s.unquoted, reason = splitLine(line, s.fields[:0], s.unquoted[:0])
 	}
-	for i := range r.cells {
-		r.cells[i] = cell{}
+	if reason == "" && len(s.fields) != len(s.columns) {
+		reason = "has " + strconv.Itoa(len(s.fields)) + " fields where the header has " + strconv.Itoa(len(s.columns))
+	}
+	if reason != "" {
+		r.fault(-1, string(line[:min(len(line), longestText)]), reason)
+		return true
 	}
 	for i, c := range s.columns {
 		if c < 0 {
 			continue
 		}
-		if reason := parseCell(&s.table.columns[c], fields[i], &r.cells[c]); reason != "" {
-			s.problems.add(s.table.name, s.line, s.table.columns[c].name, string(fields[i]), reason)
-			r.bad = true
+		if reason := parseCell(&s.table.columns[c], s.fields[i], &r.cells[c]); reason != "" {
+			r.fault(c, string(s.fields[i]), reason)
 		}
 	}
 	return true
 }
 
-// read splits the next line that is not empty.
-func (s *csvSource) read() ([][]byte, bool) {
-	for {
+// readLine is the next line that is not empty; nil at the end of the file, and when a reason says why no more can be
+// read.
+func (s *csvSource) readLine() (line []byte, reason string) {
+	for !s.over {
 		line, err := s.in.ReadSlice('\n')
-		if len(line) > 0 || err == nil {
-			s.line++
-		}
 		switch {
+		case err == nil || err == io.EOF && len(line) > 0:
+			s.line++
+		case err == io.EOF:
+			s.over = true
+			return nil, ""
 		case errors.Is(err, bufio.ErrBufferFull):
-			s.problems.add(s.table.name, s.line, "", "", "is longer than 1 MiB; the rest of the table was not read")
-			return nil, false
-		case err != nil && err != io.EOF:
-			s.problems.add(s.table.name, s.line+1, "", "", "cannot be read, the file is damaged or cut short: "+err.Error())
-			return nil, false
-		case err == io.EOF && len(line) == 0:
-			return nil, false
+			s.over = true
+			s.line++
+			return nil, "is longer than 1 MiB; the rest of the table was not read"
+		default:
+			s.over = true
+			s.line++
+			return nil, "cannot be read, the file is damaged or cut short: " + err.Error()
 		}
 		line = bytes.TrimSuffix(line, []byte("\n"))
-		if bytes.HasSuffix(line, []byte("\r")) {
-			line = line[:len(line)-1]
-			if !s.crlf {
-				s.crlf = true
-				s.warn(s.table.name + " has lines that end in CR LF")
-			}
+		if n := len(line); n > 0 && line[n-1] == '\r' {
+			line = line[:n-1]
+			s.crlf = true
 		}
-		if len(line) == 0 {
-			continue
+		if len(line) > 0 {
+			return line, ""
 		}
-		var reason string
-		if s.fields, s.unquoted, reason = splitLine(line, s.fields[:0], s.unquoted[:0]); reason != "" {
-			s.problems.add(s.table.name, s.line, "", string(line), reason)
-			continue
-		}
-		return s.fields, true
 	}
+	return nil, ""
+}
+
+func (s *csvSource) odd() []string {
+	if s.crlf {
+		return []string{s.table.name + " has lines that end in CR LF"}
+	}
+	return nil
 }
 
 // splitLine appends the fields of one line. Quoted fields are unquoted into spare, which is returned grown.
@@ -240,14 +250,7 @@ func parseCell(c *column, b []byte, into *cell) (reason string) {
 	into.given = true
 	switch c.kind {
 	case anID:
-		id, err := ParseID(string(b))
-		if err != nil {
-			if _, err := strconv.ParseFloat(string(b), 64); err == nil && bytes.ContainsAny(b, ".eE") {
-				return reasonFloatID
-			}
-			return reasonID
-		}
-		into.id = id
+		return parseIDCell(b, &into.id)
 	case aCount:
 		n, err := strconv.ParseInt(string(b), 10, 64)
 		if err != nil || b[0] == '+' {
@@ -264,7 +267,51 @@ func parseCell(c *column, b []byte, into *cell) (reason string) {
 	return ""
 }
 
+// parseIDCell is ParseID without the copy.
+func parseIDCell(b []byte, into *ID) (reason string) {
+	if n, digits := decimal(b); digits == len(b) && (digits == 1 || b[0] != '0') {
+		*into = ID(n)
+		return ""
+	}
+	id, err := ParseID(string(b))
+	if err != nil {
+		if _, err := strconv.ParseFloat(string(b), 64); err == nil && bytes.ContainsAny(b, ".eE") {
+			return reasonFloatID
+		}
+		return reasonID
+	}
+	*into = id
+	return ""
+}
+
+// decimal reads up to 19 leading digits, which always fit.
+func decimal(b []byte) (n uint64, digits int) {
+	for digits < len(b) && digits < 19 && '0' <= b[digits] && b[digits] <= '9' {
+		n = n*10 + uint64(b[digits]-'0')
+		digits++
+	}
+	return n, digits
+}
+
+// tens are the powers of ten that a double holds exactly and a short fraction needs.
+var tens = [...]float64{1, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15}
+
 func parseNumber(b []byte, into *float64) (reason string) {
+	// Digits, a dot, digits, 15 at most: both the digits as a whole number and the power of ten are exact, so one division
+	// rounds correctly (Clinger 1990).
+	if n, whole := decimal(b); whole > 0 && whole <= 15 {
+		if whole == len(b) {
+			*into = float64(n)
+			return ""
+		}
+		if b[whole] == '.' {
+			fraction, digits := decimal(b[whole+1:])
+			if digits > 0 && whole+digits <= 15 && whole+1+digits == len(b) {
+				*into = (float64(n)*tens[digits] + float64(fraction)) / tens[digits]
+				return ""
+			}
+		}
+	}
 	x, err := strconv.ParseFloat(string(b), 64)
 	switch {
 	case errors.Is(err, strconv.ErrRange) || err == nil && (math.IsNaN(x) || math.IsInf(x, 0)):

@@ -158,7 +158,7 @@ func (d *describe) bounds(info *Info, p *problems) {
 	for i, axis := range axes {
 		low, high := info.Bounds.Min[i], info.Bounds.Max[i]
 		if low >= high || math.Abs(low) > largestNM || math.Abs(high) > largestNM {
-			p.add(describeFile, 0, "bounds_nm", fmt.Sprintf("%v to %v", low, high), "does not grow along "+axis+", or exceeds 2 m")
+			p.add(describeFile, 0, "bounds_nm", fmt.Sprintf("%v to %v", low, high), "does not grow along "+axis+", or exceeds 1 m")
 		}
 	}
 }
@@ -171,7 +171,7 @@ func (d *describe) planes(info *Info, p *problems) {
 			p.add(describeFile, 0, "seams.axis", s.Axis, "is not x, y or z")
 		}
 		if !within(s.AtNM) {
-			p.add(describeFile, 0, "seams.at_nm", "", "is missing or exceeds 2 m")
+			p.add(describeFile, 0, "seams.at_nm", "", "is missing or exceeds 1 m")
 			continue
 		}
 		info.Seams = append(info.Seams, Seam{Axis: axis, AtNM: *s.AtNM})

@@ -2,11 +2,9 @@ package base
 
 import (
 	"bufio"
-	"cmp"
 	"container/heap"
 	"io"
 	"os"
-	"slices"
 )
 
 // record is how a sorter keeps a T in a file, a fixed number of bytes, and what it sorts by: two numbers, the first
@@ -46,15 +44,45 @@ func (s *sorter[T]) add(x T) error {
 	return s.spill()
 }
 
-func (s *sorter[T]) sortHeld() {
-	slices.SortFunc(s.hold, func(a, b T) int {
-		aHigh, aLow := s.key(a)
-		bHigh, bLow := s.key(b)
-		if aHigh != bHigh {
-			return cmp.Compare(aHigh, bHigh)
+func (s *sorter[T]) sortHeld() { s.hold = radixSort(s.hold, s.key) }
+
+// keyBytes is the length of a key.
+const keyBytes = 16
+
+// radixSort sorts by the bytes of the keys, the lowest first, passing over bytes that are the same in all. O(n) for each
+// of the others; several times as fast as comparing. It returns the sorted slice, which may be another one.
+func radixSort[T any](a []T, key func(T) (high, low uint64)) []T {
+	var counts [keyBytes][256]int
+	for _, x := range a {
+		high, low := key(x)
+		for b := range 8 {
+			counts[b][byte(low>>(8*b))]++
+			counts[b+8][byte(high>>(8*b))]++
 		}
-		return cmp.Compare(aLow, bLow)
-	})
+	}
+	spare := make([]T, len(a))
+	for b := range keyBytes {
+		at, next, alike := &counts[b], 0, false
+		for v, n := range at {
+			alike = alike || n == len(a)
+			at[v] = next
+			next += n
+		}
+		if alike {
+			continue
+		}
+		for _, x := range a {
+			high, low := key(x)
+			if b >= 8 {
+				low = high
+			}
+			v := byte(low >> (8 * (b % 8)))
+			spare[at[v]] = x
+			at[v]++
+		}
+		a, spare = spare, a
+	}
+	return a
 }
 
 func (s *sorter[T]) spill() (err error) {

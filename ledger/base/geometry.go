@@ -5,8 +5,8 @@ import "math"
 // blockSize is how many consecutive ordinals a block holds. Between 2,048 and 4,096 the cost is flat.
 const blockSize = 4096
 
-// largestNM bounds coordinates and sizes: what whole nm in 32 bits can hold, 2.1 m.
-const largestNM = math.MaxInt32 - 1
+// largestNM bounds coordinates and sizes to 1 m: sums of squared differences then fit 64 bits.
+const largestNM = 1e9
 
 // geometry is where the supervoxels of a block are and how large they are, by place in the block.
 type geometry struct {

@@ -73,7 +73,10 @@ func (im *importer) progress(stage string, done, total int64, unit string) {
 	}
 }
 
-// lookUp is how many rows go by between two looks at the context and two words of progress.
+// batchesTold is how many batches of rows go by between two words of progress.
+const batchesTold = 16
+
+// lookUp is how many records go by between two looks at the context.
 const lookUp = 1 << 14
 
 // alive ends work that nobody waits for.
@@ -142,50 +145,60 @@ func (im *importer) read() (err error) {
 	return im.problems.refusal()
 }
 
-// each calls fn with every row of a table, unless the table cannot be read at all.
+// each calls fn with every row of a table, unless the table cannot be read at all. A row's faults are noted before.
 func (im *importer) each(t *table, fn func(*row) error) error {
 	path := im.files[t.name]
 	if path == "" {
 		return nil
 	}
 	src, err := im.open(path, t)
-	if err != nil {
+	if src == nil || err != nil {
 		return err
 	}
-	if src == nil {
-		return nil
-	}
-	defer src.close()
 	total := int64(0)
 	if st, err := os.Stat(path); err == nil {
 		total = st.Size()
 	}
-	r := &row{cells: make([]cell, len(t.columns))}
-	for n := 0; src.next(r); n++ {
-		if n%lookUp == 0 {
-			im.progress("reading "+t.name, src.done(), total, "bytes")
+	ahead := readAhead(src, len(t.columns))
+	defer ahead.stop()
+	for n := 0; ; n++ {
+		rows, done := ahead.next()
+		if rows == nil {
+			break
 		}
-		if err := im.alive(n); err != nil {
+		if n%batchesTold == 0 {
+			im.progress("reading "+t.name, done, total, "bytes")
+		}
+		if err := im.ctx.Err(); err != nil {
 			return err
 		}
-		if err := fn(r); err != nil {
-			return err
+		for i := range rows {
+			for _, f := range rows[i].faults {
+				im.problems.add(t.name, rows[i].line, t.columnName(f.column), f.value, f.reason)
+			}
+			if err := fn(&rows[i]); err != nil {
+				return err
+			}
 		}
 	}
+	im.warnings = append(im.warnings, ahead.odd()...)
 	im.progress("reading "+t.name, total, total, "bytes")
 	return im.ctx.Err()
 }
 
+// open opens a table; nil when it cannot be read at all, and the problems are noted.
 func (im *importer) open(path string, t *table) (source, error) {
 	warn := func(s string) { im.warnf("%s", s) }
 	if strings.HasSuffix(path, ".parquet") {
-		return nil, errors.New("base: Parquet is not read yet")
+		if s, err := openParquet(path, t, &im.problems, warn); s != nil || err != nil {
+			return s, err
+		}
+		return nil, nil
 	}
-	s, err := openCSV(path, t, &im.problems, warn)
-	if s == nil { // a nil *csvSource is no nil source
-		return nil, err
+	if s, err := openCSV(path, t, &im.problems, warn); s != nil || err != nil {
+		return s, err
 	}
-	return s, nil
+	return nil, nil
 }
 
 // arrange decides ordinals and sorts everything into their order.

@@ -36,7 +36,7 @@ const mostSupervoxels = math.MaxUint32 - 1
 
 const (
 	reasonZero  = "is 0, which means background and names nothing"
-	reasonFar   = "is beyond 2.1 m"
+	reasonFar   = "is beyond 1 m"
 	reasonTwice = "is there twice"
 )
 
@@ -48,7 +48,7 @@ func (im *importer) readSupervoxels() (*supervoxels, error) {
 	outside, firstOutside := 0, int64(0)
 	err := im.each(supervoxelTable, func(r *row) error {
 		id, seg, voxels := r.cells[0].id, r.cells[1].id, r.cells[2].count
-		if r.bad {
+		if r.bad() {
 			s.gaps = true
 			return nil
 		}

@@ -90,7 +90,7 @@ func (im *importer) readSynapses() error {
 	im.synapses = newSorter(im.tmp, synapseRecords)
 	im.transmitters = []string{""}
 	err := im.each(t, func(r *row) error {
-		if r.bad {
+		if r.bad() {
 			return nil
 		}
 		if p := r.cells[6].number; p < 0 || p > 1 {
@@ -167,7 +167,7 @@ func (im *importer) readNuclei() error {
 	t := nucleusTable
 	seen := newSorter(im.tmp, seenIDs)
 	err := im.each(t, func(r *row) error {
-		if r.bad {
+		if r.bad() {
 			return nil
 		}
 		if v := r.cells[5].number; v < 0 {
@@ -205,7 +205,7 @@ func (im *importer) readTruth() error {
 	im.info.HasTruth = true
 	im.truth = &truths{has: make([]bool, im.sv.len()), neuron: make([]uint64, im.sv.len())}
 	return im.each(t, func(r *row) error {
-		if r.bad {
+		if r.bad() {
 			return nil
 		}
 		rank, ok := im.supervoxel(t, r, 0)

@@ -64,6 +64,13 @@ func (t *table) find(name string) int {
 	return slices.IndexFunc(t.columns, func(c column) bool { return c.name == name })
 }
 
+func (t *table) columnName(c int) string {
+	if c < 0 {
+		return ""
+	}
+	return t.columns[c].name
+}
+
 // cell is one value of a row, in the field of its column's kind.
 type cell struct {
 	given  bool // false: an optional column that is absent or empty
@@ -75,16 +82,31 @@ type cell struct {
 
 // row is one line of a table.
 type row struct {
-	line  int64
-	cells []cell // by column of the table
-	bad   bool   // a cell could not be read, and the problem is noted
+	line   int64
+	cells  []cell // by column of the table
+	faults []cellFault
+}
+
+// cellFault is what cannot be read.
+type cellFault struct {
+	column int // of the table; -1 when it concerns the whole line
+	value  string
+	reason string
+}
+
+func (r *row) bad() bool { return len(r.faults) > 0 }
+
+func (r *row) fault(column int, value, reason string) {
+	r.faults = append(r.faults, cellFault{column, clip(value), reason})
 }
 
 // source yields the rows of one table.
 type source interface {
-	// next fills the row; false at the end, or when no more can be read, and the problem is noted.
+	// next fills the row; false at the end. When no more can be read, the last row has a fault and says why.
 	next(*row) bool
 	// done tells how many bytes of the file have been used, for the progress bar.
 	done() int64
+	// odd tells, after the last row, what was unusual about the file.
+	odd() []string
 	close()
 }
