@@ -19,9 +19,9 @@ const (
 
 // The three priors are our own; the thresholds too, for no published ones were found.
 const (
-	crossingPrior = 0.5
-	turningPrior  = 0.15
-	thickPrior    = 0.15
+	crossingPrior = 0.4
+	turningPrior  = 0.05
+	thickPrior    = 0.03
 )
 
 // crossing reports places where two neurites seem glued in an X: arms on either side of a weak place go straight on. Dendrites
@@ -48,7 +48,7 @@ var crossing = Detector{
 				Evidence{"angle of the other", pairing.second, "°"},
 				Evidence{"next best pairing is worse by", pairing.margin, "°"},
 				Evidence{"contacts between the pairs", float64(w.contacts), ""},
-				Evidence{"summed log-odds", w.odds, "nat"}))
+				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},
@@ -80,7 +80,7 @@ var turningBack = Detector{
 				fmt.Sprintf("a branch turns back by %.0f°", turn),
 				Evidence{"deflection", turn, "°"},
 				Evidence{"contacts at its base", float64(w.contacts), ""},
-				Evidence{"summed log-odds", w.odds, "nat"}))
+				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},
@@ -107,7 +107,7 @@ var thickDaughter = Detector{
 				Evidence{"radius of the branch", daughter, "nm"},
 				Evidence{"radius of its parent", parent, "nm"},
 				Evidence{"Rall's ratio", math.Pow(daughter/parent, 1.5), ""},
-				Evidence{"summed log-odds", w.odds, "nat"}))
+				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},

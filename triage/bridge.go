@@ -3,16 +3,16 @@ package triage
 import "fmt"
 
 // bridgeMost bounds the findings of one segment: the best by gain.
-const bridgeMost = 12
+const bridgeMost = 6
 
 // bridgeLeast is the probability below which a weak place alone is not worth a look.
-const bridgeLeast = 0.08
+const bridgeLeast = 0.04
 
 // weakBridge reports places where one or a few doubtful contacts hold two substantial parts together: one wrong step of the
 // agglomeration glues two cells there. A bridge in the strict sense (Tarjan 1974, IPL 2:160) is the case of one contact.
 var weakBridge = Detector{
 	Name: "weak-bridge", Family: "bridge", Kind: FalseMerge,
-	Says: "a few doubtful contacts hold two substantial parts together; probability from the model's own affinities",
+	Says: "doubtful contacts hold two substantial parts together; probability from what all contacts between them say",
 	judge: func(c *Case) []Finding {
 		var out []Finding
 		for i := range c.weak() {
@@ -32,7 +32,8 @@ var weakBridge = Detector{
 				fmt.Sprintf("%s %d supervoxels to the rest", what, w.supervoxels[s]),
 				Evidence{"contacts that cross", float64(w.contacts), ""},
 				Evidence{"affinity of the one at the place", w.strongest, ""},
-				Evidence{"summed log-odds", w.odds, "nat"},
+				Evidence{"what they say for one cell", w.belief, "nat"},
+				Evidence{"cost of cutting them", w.odds, "nat"},
 				Evidence{"smaller side", float64(w.supervoxels[s]), "supervoxels"},
 				Evidence{"smaller side", w.cable[s] / 1000, "µm"},
 				Evidence{"synapses there", float64(w.synapses[s]), ""}))

@@ -26,6 +26,7 @@ type Case struct {
 	edges []cut.Edge
 	tree  func() *tree
 	weak  func() []weakPlace
+	tips  func() map[int32]tip
 }
 
 // NewCase prepares a segment. What several detectors need is computed when the first asks for it.
@@ -37,6 +38,7 @@ func NewCase(w *base.View, sizes stats.Robust, sizesOK bool) *Case {
 	c.start, c.arcs = w.Adjacency()
 	c.tree = sync.OnceValue(func() *tree { return growTree(c) })
 	c.weak = sync.OnceValue(func() []weakPlace { return findWeak(c) })
+	c.tips = sync.OnceValue(c.findTips)
 	return c
 }
 

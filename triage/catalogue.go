@@ -16,11 +16,17 @@ var catalogue = []Detector{
 // Catalogue lists the detectors.
 func Catalogue() []Detector { return catalogue }
 
+// leastProbability is what a finding must reach to be kept: below it, people would look at 20 places to find one error.
+const leastProbability = 0.05
+
 // Judge lets every detector look at a segment. The findings of one detector are in order of gain.
 func Judge(c *Case) []Finding {
 	var out []Finding
 	for _, d := range catalogue {
 		for _, f := range d.judge(c) {
+			if f.Probability < leastProbability {
+				continue
+			}
 			f.Detector, f.Family, f.Kind = d.Name, d.Family, d.Kind
 			out = append(out, f)
 		}

@@ -19,6 +19,27 @@ const (
 	contactMost = 40
 )
 
+const (
+	// passing is how much likelier two cells are where a fragment is touched in passing and not at an end; our own prior.
+	passing = 0.25
+	// nucleated is how much likelier two cells are when both have a nucleus; our own prior.
+	nucleated = 0.05
+	// tiny is up to how many supervoxels a fragment is all ends.
+	tiny = 6
+)
+
+// fit weighs a neighbour by what the two segments are: a neurite goes on at its ends, and a cell has one nucleus.
+func (c *Case) fit(n neighbour) float64 {
+	f := 1.0
+	if _, atTip := c.tips()[n.strongest.At]; !atTip && c.Len() > tiny {
+		f *= passing
+	}
+	if other, ok := c.Other(n.segment); ok && other.Nuclei > 0 && len(c.Nuclei) > 0 {
+		f *= nucleated
+	}
+	return f
+}
+
 func contactProbability(affinity float64) float64 { return affinity / (affinity + contactHalf) }
 
 // strongContact reports the strongest rejected contact to each neighbouring segment.
@@ -31,7 +52,7 @@ var strongContact = Detector{
 			if n.strongest.Affinity < contactLeast {
 				continue
 			}
-			p := contactProbability(n.strongest.Affinity)
+			p := contactProbability(n.strongest.Affinity) * c.fit(n)
 			out = append(out, c.joining(n, c.Points[n.strongest.At], p,
 				fmt.Sprintf("a rejected contact of affinity %.2f to segment %d", n.strongest.Affinity, uint64(n.segment)),
 				Evidence{"affinity", n.strongest.Affinity, ""},
@@ -49,12 +70,24 @@ type neighbour struct {
 	contacts  int
 }
 
-// neighbours lists the segments that rejected contacts lead to, each with its strongest. Contacts that a person cut are not
-// among them.
+// judges says whether this segment is the one of two from which a contact between them is judged: the smaller, because it is
+// the fragment, and its ends are what counts.
+func (c *Case) judges(other ledger.ID) bool {
+	o, ok := c.Other(other)
+	if !ok {
+		return true
+	}
+	own := ledger.Segment{ID: c.Segment}
+	own.Supervoxels = int64(c.Len())
+	return smaller(own, o).ID == c.Segment
+}
+
+// neighbours lists the segments that rejected contacts lead to and that are judged from here, each with its strongest.
+// Contacts that a person cut are not among them.
 func (c *Case) neighbours() []neighbour {
 	at := make(map[ledger.ID]*neighbour)
 	for _, o := range c.Outside {
-		if o.Accepted || o.OtherSegment == c.Segment {
+		if o.Accepted || o.OtherSegment == c.Segment || !c.judges(o.OtherSegment) {
 			continue
 		}
 		n, ok := at[o.OtherSegment]

@@ -3,6 +3,7 @@ package triage
 import (
 	"context"
 	"errors"
+	"slices"
 
 	"github.com/jackc/pgx/v5"
 
@@ -53,6 +54,7 @@ func followBatch(ctx context.Context, v *ledger.Volume, from int64, entries []le
 		return err
 	}
 	var findings []Finding
+	judged := make(map[ledger.ID]bool)
 	for _, e := range entries {
 		for _, id := range e.After {
 			if gone[id] {
@@ -62,9 +64,15 @@ func followBatch(ctx context.Context, v *ledger.Volume, from int64, entries []le
 			if err != nil {
 				return err
 			}
+			judged[id] = true
 			findings = append(findings, found...)
 		}
 	}
+	kept, err := j.carry(ctx, retired, judged)
+	if err != nil {
+		return err
+	}
+	findings = append(findings, kept...)
 	return pg.InTx(ctx, v.Pool(), func(ctx context.Context, tx pgx.Tx) error {
 		if err := move(ctx, tx, v.ID(), from, to); err != nil {
 			return err
@@ -76,4 +84,45 @@ func followBatch(ctx context.Context, v *ledger.Volume, from int64, entries []le
 		}
 		return store(ctx, tx, v.ID(), to, findings)
 	})
+}
+
+// carry takes along suspected false splits that were judged from a segment which has not changed: only the name of the other
+// has. The finding stands as long as its two supervoxels are in different segments.
+func (j *judge) carry(ctx context.Context, retired []ledger.ID, judged map[ledger.ID]bool) ([]Finding, error) {
+	rows, err := j.volume.Pool().Query(ctx, findingColumns+`
+		 where volume_id = $1 and retired is null and kind = $2 and segments && $3`, j.volume.ID(), FalseSplit, retired)
+	if err != nil {
+		return nil, err
+	}
+	old, err := pgx.CollectRows(rows, scanFinding)
+	if err != nil || len(old) == 0 {
+		return nil, err
+	}
+	var ends []ledger.ID
+	for _, f := range old {
+		ends = append(ends, f.Proposal.A, f.Proposal.B)
+	}
+	now, err := j.volume.SegmentsOf(ctx, ends, ledger.At{})
+	if err != nil {
+		return nil, err
+	}
+	var out []Finding
+	for i, f := range old {
+		a, b := j.byID[now[2*i]], j.byID[now[2*i+1]]
+		if a.ID == b.ID || judged[smaller(a, b).ID] {
+			continue
+		}
+		f.Segments = []ledger.ID{a.ID, b.ID}
+		slices.Sort(f.Segments)
+		out = append(out, f)
+	}
+	return out, nil
+}
+
+// smaller is the segment of two from which a contact between them is judged.
+func smaller(a, b ledger.Segment) ledger.Segment {
+	if a.Supervoxels < b.Supervoxels || a.Supervoxels == b.Supervoxels && a.ID < b.ID {
+		return a
+	}
+	return b
 }

@@ -12,7 +12,7 @@ const (
 	polarityChance   = 1e-3 // Fisher's exact p, at most
 	// polarityPrior is how often such a weak place parts an axon from somebody else's dendrite, beyond what the contacts say. Our
 	// own: a segregated arbor is also simply a neuron, which is why strong places are never reported.
-	polarityPrior = 0.3
+	polarityPrior = 0.08
 )
 
 // polarityConflict reports weak places that part inputs from outputs: an axon glued to a dendrite. The split of roles is
@@ -45,7 +45,7 @@ var polarityConflict = Detector{
 				Evidence{"synapse flow centrality", float64(flow.sum()), "paths"},
 				Evidence{"inputs on the smaller side", float64(w.in[w.smaller()]), ""},
 				Evidence{"outputs on the smaller side", float64(w.out[w.smaller()]), ""},
-				Evidence{"summed log-odds", w.odds, "nat"}))
+				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},

@@ -8,7 +8,7 @@ import (
 )
 
 // sizePrior is how often a segment of outlying size is a false merge: our own, to be learned from outcomes.
-const sizePrior = 0.3
+const sizePrior = 0.1
 
 // sizeOutlier reports segments far larger than the volume's others, on a logarithmic scale (Iglewicz & Hoaglin 1993; sizes
 // are log-normal), and points at the weak place that would divide them best.
@@ -41,7 +41,7 @@ var sizeOutlier = Detector{
 			return []Finding{c.finding(fmt.Sprintf("size-%d", c.IDs[root]), c.Points[root], sizePrior/3, c.worth(len(c.Synapses)/2, c.tree().cable/2), nil,
 				said+"; no weak place in it", evidence...)}
 		}
-		evidence = append(evidence, Evidence{"summed log-odds at its weakest place", place.odds, "nat"})
+		evidence = append(evidence, Evidence{"what the contacts at its weakest place say for one cell", place.belief, "nat"})
 		p := 1 - (1-sizePrior)*(1-place.probability())
 		return []Finding{c.finding(c.pairKey(place.below, place.above), c.between(place.below, place.above), p, c.moved(place), c.propose(place), said, evidence...)}
 	},

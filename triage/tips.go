@@ -48,7 +48,7 @@ var facingTip = Detector{
 			if distance <= nearSeam {
 				prior, said = tipSeamPrior, said+" at a "+where
 			}
-			p := 1 - (1-prior)*(1-contactProbability(n.strongest.Affinity))
+			p := (1 - (1-prior)*(1-contactProbability(n.strongest.Affinity))) * c.fit(n)
 			evidence := []Evidence{
 				{"angle between the tip's direction and the other", off, "°"},
 				{"distance to it", c.Points[t.tip].Distance(there), "nm"},
@@ -72,7 +72,7 @@ type tip struct {
 }
 
 // tips lists the ends of long twigs, the root among them when it is an end, by each supervoxel that is near one.
-func (c *Case) tips() map[int32]tip {
+func (c *Case) findTips() map[int32]tip {
 	t := c.tree()
 	out := make(map[int32]tip)
 	if c.Len() < 2 {

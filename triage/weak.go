@@ -5,15 +5,17 @@ import (
 	"slices"
 
 	"fettle.example/fettle/ledger"
+	"fettle.example/fettle/ledger/base"
 	"fettle.example/fettle/ledger/cut"
 )
 
 // weakPlace is a place where little holds a segment together: the cut between a supervoxel's subtree and the rest. Every
 // bridge is one, and so is a false merge made by a few contacts, because a shortest-path tree crosses it once.
 type weakPlace struct {
-	below, above int32 // the tree edge: child and parent
-	contacts     int   // that cross
-	odds         float64
+	below, above int32   // the tree edge: child and parent
+	contacts     int     // that cross
+	odds         float64 // what cutting them costs: log-odds, never less than a unit each
+	belief       float64 // what they say: log-odds, with those that speak against one cell
 	// What is on the side of the subtree, and on the other.
 	supervoxels [2]int
 	voxels      [2]float64
@@ -24,9 +26,31 @@ type weakPlace struct {
 	strongest   float64    // affinity of the strongest contact that crosses
 }
 
-// probability that the two sides are two cells, by the model's own belief: the contacts that cross speak for one cell with
-// their log-odds, added up as if independent (METHODS: log-odds of the affinity, floor at 0.5).
-func (w *weakPlace) probability() float64 { return 1 / (1 + math.Exp(w.odds)) }
+const (
+	// weakPrior is the log-odds that a weak place is sound, before its contacts are heard: 20 to 1, our own prior. Real necks are
+	// thin, and far more numerous than false merges.
+	weakPrior = 3.0
+	// temper divides the contacts' summed log-odds, because contacts of the same two bodies err together.
+	temper = 2.0
+	// beliefMost bounds what one contact may say, in log-odds: 99 to 1.
+	beliefMost = 4.6
+)
+
+// probability that the two sides are two cells, from what the contacts between them say. Two neurites that touch in passing
+// have many contacts, and all but one or two of them speak against one cell; a thin neck has one, which speaks for it.
+func (w *weakPlace) probability() float64 { return 1 / (1 + math.Exp(weakPrior+w.belief/temper)) }
+
+// belief is what one contact says.
+func belief(c base.Contact) float64 {
+	switch {
+	case c.Link:
+		return beliefMost
+	case c.Assumed:
+		return 0 // nobody looked
+	}
+	p := min(max(c.Affinity, 1e-6), 1-1e-6)
+	return min(max(math.Log(p/(1-p)), -beliefMost), beliefMost)
+}
 
 // smaller is which side has fewer voxels.
 func (w *weakPlace) smaller() int {
@@ -43,8 +67,8 @@ func (c *Case) moved(w *weakPlace) float64 {
 }
 
 const (
-	// weakOdds is the most that may hold a weak place together: one contact of affinity 0.95, or several weaker ones.
-	weakOdds = 2.95
+	// weakOdds is the most that may hold a weak place together: one contact of affinity 0.97, or several weaker ones.
+	weakOdds = 3.5
 	// weakLeast is the fewest supervoxels a side must have: twigs of fewer are not worth a look of their own.
 	weakLeast = 4
 )
@@ -55,7 +79,7 @@ const (
 func findWeak(c *Case) []weakPlace {
 	t := c.tree()
 	n := c.Len()
-	odds, crossing := make([]float64, n), make([]float64, n)
+	odds, says, crossing := make([]float64, n), make([]float64, n), make([]float64, n)
 	meet := newMeeting(t)
 	for k, contact := range c.Contacts {
 		a, b := contact.A, contact.B
@@ -64,13 +88,19 @@ func findWeak(c *Case) []weakPlace {
 		if top == none {
 			continue
 		}
-		odds[a], odds[b], odds[top] = odds[a]+weight, odds[b]+weight, odds[top]-2*weight
+		odds[a] += weight
+		odds[b] += weight
+		odds[top] -= 2 * weight // which may be one of the two
+		said := belief(contact)
+		says[a] += said
+		says[b] += said
+		says[top] -= 2 * said
 		crossing[a]++
 		crossing[b]++
 		crossing[top] -= 2
 	}
 	at := func(x []float64) func(int32) float64 { return func(i int32) float64 { return x[i] } }
-	sumOdds, sumCrossing := t.sums(at(odds)), t.sums(at(crossing))
+	sumOdds, sumSays, sumCrossing := t.sums(at(odds)), t.sums(at(says)), t.sums(at(crossing))
 	side := c.sides()
 	var out []weakPlace
 	for v := range int32(n) {
@@ -78,7 +108,7 @@ func findWeak(c *Case) []weakPlace {
 			continue
 		}
 		w := side.place(v, t.parent[v])
-		w.odds, w.contacts = max(0, sumOdds[v]), int(math.Round(sumCrossing[v]))
+		w.odds, w.belief, w.contacts = max(0, sumOdds[v]), sumSays[v], int(math.Round(sumCrossing[v]))
 		if min(w.supervoxels[0], w.supervoxels[1]) < weakLeast {
 			continue
 		}
