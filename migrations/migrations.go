@@ -13,7 +13,6 @@ import (
 	"errors"
 	"fmt"
 	"io/fs"
-	"os"
 	"slices"
 	"strconv"
 	"strings"
@@ -23,6 +22,7 @@ import (
 	"github.com/golang-migrate/migrate/v4/database"
 	migratepgx "github.com/golang-migrate/migrate/v4/database/pgx/v5"
 	"github.com/golang-migrate/migrate/v4/source/iofs"
+	"github.com/jackc/pgx/v5"
 	"github.com/jackc/pgx/v5/pgxpool"
 	"github.com/jackc/pgx/v5/stdlib"
 	"github.com/riverqueue/river/riverdriver/riverpgxv5"
@@ -82,26 +82,40 @@ func versions() []int {
 
 // Up applies what is missing. A crash here leaves a database that the next Up completes.
 func Up(ctx context.Context, pool *pgxpool.Pool) error {
-	conn, err := pool.Acquire(ctx)
+	unlock, err := lock(ctx, pool)
 	if err != nil {
 		return fmt.Errorf("migrate: %w", err)
 	}
-	defer conn.Release()
-	ctx, cancel := context.WithTimeout(ctx, lockTimeout)
-	defer cancel()
-	// A session lock: it goes with the connection, so a killed process leaves none behind.
-	if _, err := conn.Exec(ctx, `select pg_advisory_lock($1)`, int64(lockKey)); err != nil {
-		return fmt.Errorf("migrate: wait for another process that migrates: %w", err)
-	}
-	defer conn.Exec(context.WithoutCancel(ctx), `select pg_advisory_unlock($1)`, int64(lockKey)) //nolint:errcheck // it ends with the session
-	if err := ours(pool); err != nil {
+	defer unlock()
+	if err := ours(ctx, pool); err != nil {
 		return fmt.Errorf("migrate: %w", err)
 	}
-	return jobs(ctx, pool)
+	if err := jobs(ctx, pool); err != nil {
+		return fmt.Errorf("migrate jobs: %w", err)
+	}
+	return nil
+}
+
+// lock waits until no other process migrates. It is a session lock, so a killed process leaves none behind, on a
+// connection of its own, so that waiting callers don't hold the pool's.
+func lock(ctx context.Context, pool *pgxpool.Pool) (unlock func(), err error) {
+	conn, err := pgx.ConnectConfig(ctx, pool.Config().ConnConfig)
+	if err != nil {
+		return nil, err
+	}
+	unlock = func() { _ = conn.Close(context.WithoutCancel(ctx)) }
+	ctx, cancel := context.WithTimeout(ctx, lockTimeout)
+	defer cancel()
+	if _, err := conn.Exec(ctx, `select pg_advisory_lock($1)`, int64(lockKey)); err != nil {
+		unlock()
+		return nil, fault.New(fault.Busy, "schema-locked", "another process has been migrating this database for long").
+			WithNext("try again when it is done").Wrap(err)
+	}
+	return unlock, nil
 }
 
 // ours applies the files of this folder.
-func ours(pool *pgxpool.Pool) (err error) {
+func ours(ctx context.Context, pool *pgxpool.Pool) (err error) {
 	db := stdlib.OpenDBFromPool(pool)
 	driver, err := migratepgx.WithInstance(db, &migratepgx.Config{})
 	if err != nil {
@@ -109,55 +123,60 @@ func ours(pool *pgxpool.Pool) (err error) {
 	}
 	src, err := iofs.New(FS, ".")
 	if err != nil {
-		return errors.Join(err, db.Close())
+		return errors.Join(err, driver.Close())
 	}
 	m, err := migrate.NewWithInstance("files", src, "postgres", driver)
 	if err != nil {
-		return errors.Join(err, db.Close())
+		return errors.Join(err, src.Close(), driver.Close())
 	}
 	defer func() {
 		srcErr, dbErr := m.Close()
 		err = errors.Join(err, srcErr, dbErr)
 	}()
 	m.LockTimeout = lockTimeout
-	if err := repair(pool, driver); err != nil {
+	if err := repair(ctx, pool, driver); err != nil {
 		return err
 	}
-	err = m.Up()
-	switch {
-	case errors.Is(err, migrate.ErrNoChange):
-		return nil
-	case errors.Is(err, os.ErrNotExist):
-		return fault.New(fault.Conflict, "schema-newer", "the database was migrated by a newer program than this one").
-			WithNext("run the newer program").Wrap(err)
+	if err := m.Up(); !errors.Is(err, migrate.ErrNoChange) {
+		return err
 	}
-	return err
+	return nil
 }
 
 // repair clears the mark of a step that was interrupted: its row in schema_done tells whether its work was committed.
-func repair(pool *pgxpool.Pool, driver database.Driver) (err error) {
+func repair(ctx context.Context, pool *pgxpool.Pool, driver database.Driver) (err error) {
 	if err := driver.Lock(); err != nil { // waits for a backend that is still dying
 		return err
 	}
 	defer func() { err = errors.Join(err, driver.Unlock()) }()
 	version, dirty, err := driver.Version()
-	if err != nil || !dirty {
+	if err != nil {
 		return err
 	}
-	var whole bool
-	ctx := context.Background()
-	if err := pool.QueryRow(ctx, `select to_regclass('schema_done') is not null`).Scan(&whole); err != nil {
+	if version != database.NilVersion && !slices.Contains(versions(), version) {
+		return fault.Newf(fault.Conflict, "schema-newer", "the database has step %d, which this program does not know", version).
+			WithNext("run the newer program that migrated it")
+	}
+	if !dirty {
+		return nil
+	}
+	whole, err := done(ctx, pool, version)
+	if err != nil {
 		return err
 	}
-	if whole {
-		if err := pool.QueryRow(ctx, `select exists (select from schema_done where version = $1)`, version).Scan(&whole); err != nil {
-			return err
-		}
+	if !whole {
+		version = before(version)
 	}
-	if whole {
-		return driver.SetVersion(version, false)
+	return driver.SetVersion(version, false)
+}
+
+// done tells whether a step's work was committed. The first step makes the table that is asked.
+func done(ctx context.Context, pool *pgxpool.Pool, version int) (yes bool, err error) {
+	if err := pool.QueryRow(ctx, `select to_regclass('schema_done') is not null`).Scan(&yes); err != nil || !yes {
+		return false, err
 	}
-	return driver.SetVersion(before(version), false)
+	err = pool.QueryRow(ctx, `select exists (select from schema_done where version = $1)`, version).Scan(&yes)
+	return yes, err
 }
 
 // before is the number of the step before one, or database.NilVersion.
@@ -174,14 +193,12 @@ func before(version int) int {
 // jobs brings River's tables up to date. River's migrator takes no lock of its own; Up holds ours.
 func jobs(ctx context.Context, pool *pgxpool.Pool) error {
 	if _, err := pool.Exec(ctx, `create schema if not exists `+JobSchema); err != nil {
-		return fmt.Errorf("migrate jobs: %w", err)
+		return err
 	}
 	m, err := rivermigrate.New(riverpgxv5.New(pool), &rivermigrate.Config{Schema: JobSchema})
 	if err != nil {
-		return fmt.Errorf("migrate jobs: %w", err)
+		return err
 	}
-	if _, err := m.Migrate(ctx, rivermigrate.DirectionUp, nil); err != nil {
-		return fmt.Errorf("migrate jobs: %w", err)
-	}
-	return nil
+	_, err = m.Migrate(ctx, rivermigrate.DirectionUp, nil)
+	return err
 }
