@@ -260,16 +260,28 @@ func (im *importer) countSegments() {
 		seg.voxels += im.sv.voxels[r]
 		seg.box.add(im.sv.at[r])
 	}
-	parted := 0
+	im.noteAssumed()
+}
+
+// noteAssumed counts and reports the links that no contact stands behind.
+func (im *importer) noteAssumed() {
+	l := im.layout
+	im.info.Assumed = int64(len(l.assumed))
 	for _, e := range l.assumed {
-		seg := im.segmentOf(l.ordinal[e[0]])
-		if seg.assumed++; seg.assumed == 1 {
-			parted++
+		im.segmentOf(l.ordinal[e[0]]).assumed++
+	}
+	parted, first := 0, uint64(0)
+	for _, s := range im.segments {
+		if s.assumed > 0 {
+			if parted++; parted == 1 || s.id < first {
+				first = s.id
+			}
 		}
 	}
-	im.info.Assumed = int64(len(l.assumed))
 	if parted > 0 {
-		im.warnf("%d base segments were not held together by their contacts; %d links to the nearest pieces were assumed", parted, len(l.assumed))
+		im.warnf("%s, the first is %d; %s assumed",
+			plural(parted, "base segment is not held together by its contacts", "base segments are not held together by their contacts"), first,
+			plural(len(l.assumed), "link to the nearest pieces was", "links to the nearest pieces were"))
 	}
 }
 

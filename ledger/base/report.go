@@ -1,6 +1,9 @@
 package base
 
-import "time"
+import (
+	"fmt"
+	"time"
+)
 
 // ImportOptions are the choices of whoever imports.
 type ImportOptions struct {
@@ -21,4 +24,12 @@ type Report struct {
 	Info     Info
 	Warnings []string // what was odd but usable
 	Elapsed  time.Duration
+}
+
+// plural counts things in words.
+func plural(n int, one, many string) string {
+	if n == 1 {
+		return "1 " + one
+	}
+	return fmt.Sprint(n, " ", many)
 }
