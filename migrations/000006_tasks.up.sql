@@ -21,8 +21,7 @@ create table task (
     assigned_to text             references person (handle),
     claim_id    uuid,
     primary key (volume_id, number),
-    constraint task_state check (case state when 'open' then claim_id is null when 'overtaken' then true
-                                      else claim_id is not null and state in ('claimed', 'resolved', 'accepted', 'returned') end),
+    constraint task_state check (state in ('open', 'claimed', 'resolved', 'accepted', 'returned', 'overtaken')),
     constraint task_waits check (waits >= 0)
 ) with (fillfactor = 70);
 comment on column task.segments is 'ascending as unsigned numbers, each once';
@@ -40,7 +39,6 @@ create table task_place (
     number      bigint           not null,
     task_id     uuid             not null,
     place       text             not null,
-    latest      boolean          not null default true,
     probability double precision not null,
     gain        double precision not null,
     minutes     double precision not null,
@@ -56,8 +54,16 @@ create table task_place (
     constraint task_place_point check (cardinality(point_nm) = 3)
 );
 comment on column task_place.place is 'triage''s key of the place, the same under changing segment ids';
-comment on column task_place.latest is 'false once a newer task is about the same place';
-create unique index task_place_latest on task_place (volume_id, place) where latest;
+
+-- Which task each finding's place belongs to: the latest, if there were several. So that no two live tasks are about one.
+create table task_key (
+    volume_id int    not null,
+    key       text   not null,
+    number    bigint not null,
+    constraint task_one_a_place primary key (volume_id, key),
+    constraint task_key_task foreign key (volume_id, number) references task (volume_id, number)
+);
+create index task_key_by_task on task_key (volume_id, number);
 
 -- Who stands in a segment's line: its open tasks that nobody was assigned.
 create table task_line (
@@ -84,9 +90,8 @@ create table claim (
     constraint claim_once primary key (claim_id),
     constraint claim_task foreign key (volume_id, number) references task (volume_id, number),
     constraint claim_entry foreign key (volume_id, position) references entry (volume_id, position),
-    constraint claim_ended check (case when ended is null then ended_at is null and outcome is null
-                                       else ended_at is not null and case ended when 'resolved' then outcome in ('corrected', 'sound', 'unclear')
-                                       else ended in ('released', 'expired', 'overtaken') and outcome is null end end),
+    constraint claim_ended check (ended in ('resolved', 'released', 'expired', 'overtaken')),
+    constraint claim_outcome check (outcome in ('corrected', 'sound', 'unclear')),
     constraint claim_corrected check ((outcome is not distinct from 'corrected') = (position is not null))
 );
 comment on table claim is 'personal data: who worked on what, from when to when';
@@ -101,7 +106,7 @@ create index claim_by_time on claim (volume_id, claimed_at);
 create table lease (
     volume_id  int    not null,
     segment_id bigint not null,
-    claim_id   uuid   not null references claim (claim_id),
+    claim_id   uuid   not null,
     constraint lease_one_a_segment primary key (volume_id, segment_id)
 );
 
@@ -124,7 +129,7 @@ create table task_event (
     number    bigint      not null,
     event     bigint      not null generated always as identity,
     at        timestamptz not null default now(),
-    person    text        references person (handle),
+    person    text,
     what      text        not null,
     note      text        not null default '',
     primary key (volume_id, number, event)
@@ -191,7 +196,7 @@ begin
     when 'claimed > open', 'claimed > overtaken' then
         fits := not exists (select from claim where claim_id = old.claim_id and ended is null);
     when 'claimed > resolved' then
-        fits := new.claim_id = old.claim_id and exists (select from claim where claim_id = new.claim_id and ended = 'resolved');
+        fits := new.claim_id = old.claim_id and exists (select from claim where claim_id = new.claim_id and ended = 'resolved' and outcome is not null);
     when 'resolved > accepted' then
         fits := new.claim_id = old.claim_id and exists (select from review where claim_id = new.claim_id and verdict = 'accept');
     when 'resolved > returned' then
@@ -231,15 +236,11 @@ begin
     end if;
 end $$;
 
-create function task_note(volume int, task_number bigint, who text, what text, note text) returns void language sql as $$
-    insert into task_event (volume_id, number, person, what, note) values (volume, task_number, who, what, note);
-$$;
-
 -- Claims the task wanted, or the best that this person may have, and returns it with the claim; nulls when there is
 -- none. One assigned to them goes before all others.
 create function task_claim(volume int, who text, wanted bigint, kinds text[], families text[], id uuid, lasts interval,
                            out t task, out c claim)
-language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off as $$
+language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off set enable_bitmapscan = off as $$
 declare
     alone boolean := wanted is not null
                   or exists (select from task x where x.volume_id = volume and x.assigned_to = who and x.state = 'open');
@@ -267,15 +268,20 @@ begin
     if t.number is null then
         return;
     end if;
-    insert into claim (claim_id, volume_id, number, person, until) values (id, volume, t.number, who, now() + lasts) returning * into c;
-    insert into lease (volume_id, segment_id, claim_id) select volume, s, id from unnest(t.segments) s;
-    if t.assigned_to is null then
-        delete from task_line l where l.volume_id = volume and l.segment_id = any (t.segments) and l.priority = t.priority and l.number = t.number;
-    else
+    with claimed as (
+         insert into claim (claim_id, volume_id, number, person, until) values (id, volume, t.number, who, now() + lasts) returning *),
+    leased as (
+         insert into lease (volume_id, segment_id, claim_id) select volume, s, id from unnest(t.segments) s),
+    left_lines as (
+         delete from task_line l
+          where t.assigned_to is null and l.volume_id = volume and l.segment_id = any (t.segments) and l.priority = t.priority and l.number = t.number),
+    noted as (
+         insert into task_event (volume_id, number, person, what) values (volume, t.number, who, 'claimed'))
+    select * into c from claimed;
+    if t.assigned_to is not null then
         perform heads_wait(t);
     end if;
     update task x set state = 'claimed', claim_id = id where x.volume_id = volume and x.number = t.number returning * into t;
-    insert into task_event (volume_id, number, person, what) values (volume, t.number, who, 'claimed');
 end $$;
 
 -- Makes the heads wait of lines whose segments were leased to a task that does not stand in them.
@@ -327,23 +333,19 @@ create function task_head(volume int, segment bigint) returns table (number bigi
      order by l.priority desc, l.number limit 1
 $$;
 
--- A claim that is live and this person's (anybody's, when who is null), locked.
-create function claim_held(id uuid, who text) returns claim language plpgsql as $$
+-- Refuses who has no such claim (who is null for the program itself), and takes the queue lock shared. Whether the
+-- claim is still live is for claim_is_live to say, when the caller updates it.
+create function claim_enter(id uuid, who text) returns void language plpgsql as $$
 declare
-    c claim;
+    c record;
 begin
-    select * into c from claim where claim_id = id;
+    select volume_id, person into c from claim where claim_id = id;
     if not found then
         perform refuse('claim_known', 'there is no such claim');
     elsif c.person <> who then
         perform refuse('claim_own', 'the claim is somebody else''s');
     end if;
-    perform task_lock(c.volume_id, false);
-    select * into c from claim where claim_id = id for update;
-    if c.ended is not null then
-        perform refuse('claim_live', 'the claim has ended');
-    end if;
-    return c;
+    perform pg_advisory_xact_lock_shared(1952543595, c.volume_id);
 end $$;
 
 -- Gives up the leases of a claim's task, and lets those step forward who stand first now. A task that comes back
@@ -371,34 +373,37 @@ end $$;
 -- extended meanwhile is left alone, and the answer is false.
 create function claim_end(id uuid, who text, how text, why text) returns boolean language plpgsql as $$
 declare
-    c claim := claim_held(id, who);
+    c claim;
     t task;
-    n int;
+    n int := 0;
 begin
-    if how = 'expired' and c.until > now() then
+    perform claim_enter(id, who);
+    update claim set ended = how, ended_at = now(), note = why
+     where claim_id = id and (how <> 'expired' or until <= now()) returning * into c;
+    if not found then
         return false;
     end if;
     select * into t from task x where x.volume_id = c.volume_id and x.number = c.number for update;
-    update claim set ended = how, ended_at = now(), note = why where claim_id = id;
     if t.assigned_to is null then
         n := lease_end(id, t, t.priority);
         insert into task_line (volume_id, segment_id, priority, number) select t.volume_id, s, t.priority, t.number from unnest(t.segments) s;
     else
         perform lease_end(id, t, null);
-        n := 0;
     end if;
     update task x set state = 'open', claim_id = null, waits = n where x.volume_id = t.volume_id and x.number = t.number;
-    perform task_note(t.volume_id, t.number, case when how = 'expired' then c.person else who end, how, why);
+    insert into task_event (volume_id, number, person, what, note)
+    values (t.volume_id, t.number, case when how = 'expired' then c.person else who end, how, why);
     return true;
 end $$;
 
 -- Gives a live claim a whole lease again, from now.
 create function claim_extend(id uuid, who text, lasts interval) returns claim language plpgsql as $$
 declare
-    c claim := claim_held(id, who);
+    c claim;
 begin
+    perform claim_enter(id, who);
     update claim set until = greatest(until, now() + lasts) where claim_id = id returning * into c;
-    perform task_note(c.volume_id, c.number, who, 'extended', '');
+    insert into task_event (volume_id, number, person, what) values (c.volume_id, c.number, who, 'extended');
     return c;
 end $$;
 
@@ -414,9 +419,9 @@ end $$;
 -- Ends a claim with an outcome, and returns the task and the claim. of_entry and changed are the position of the
 -- correction and the segments it changes.
 create function claim_resolve(id uuid, who text, how text, why text, of_entry bigint, changed bigint[], out t task, out c claim)
-language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off as $$
+language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off set enable_bitmapscan = off as $$
 begin
-    c := claim_held(id, who);
+    perform claim_enter(id, who);
     update claim set ended = 'resolved', ended_at = now(), outcome = how, note = why, position = of_entry
      where claim_id = id returning * into c;
     update task x set state = 'resolved' where x.volume_id = c.volume_id and x.number = c.number returning * into t;
@@ -446,7 +451,8 @@ begin
     end if;
     insert into review (claim_id, person, verdict, note, volume_id, position) values (t.claim_id, who, says, why, volume, reversal);
     update task x set state = case says when 'accept' then 'accepted' else 'returned' end where x.volume_id = volume and x.number = reviewed;
-    perform task_note(volume, reviewed, who, case says when 'accept' then 'accepted' else 'returned' end, why);
+    insert into task_event (volume_id, number, person, what, note)
+    values (volume, reviewed, who, case says when 'accept' then 'accepted' else 'returned' end, why);
 end $$;
 
 -- Open tasks enter the lines of their segments. The caller has the queue lock alone.

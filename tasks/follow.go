@@ -16,8 +16,10 @@ import (
 //
 //   - a task on a retired segment whose place triage still finds moves to the place's new segments; its number, its
 //     assignment and its claim stay;
-//   - one whose place is gone is overtaken, and a claim on it ends;
+//   - one whose place is gone, or has become part of another's, is overtaken, and a claim on it ends;
 //   - a new place becomes a new task, unless somebody found it sound or unclear before and was not returned.
+//
+// A place is the same while it has a finding with the same key.
 //
 // The first time, every place becomes a task. All of it, and the position, is one transaction.
 func (q *Queue) Follow(ctx context.Context, v *ledger.Volume) (position int64, err error) {
@@ -36,7 +38,7 @@ type news struct {
 	from, to int64
 	retired  []ledger.ID
 	by       map[ledger.ID]string // the entry that retired a segment, for the history
-	places   map[string]triage.Place
+	places   []triage.Place       // best first
 }
 
 func (q *Queue) follow(ctx context.Context, v *ledger.Volume, all bool) (position int64, made int, err error) {
@@ -86,22 +88,17 @@ func readNews(ctx context.Context, v *ledger.Volume, all bool) (n news, err erro
 	if err != nil {
 		return n, err
 	}
-	var places []triage.Place
 	switch {
 	case all || n.from == nowhere:
-		places, err = triage.Places(ctx, tx, v, nil)
+		n.places, err = triage.Places(ctx, tx, v, nil)
 	case len(born) > 0:
-		places, err = triage.Places(ctx, tx, v, born)
+		n.places, err = triage.Places(ctx, tx, v, born)
 	}
-	if err != nil {
-		return n, err
+	for i := range n.places {
+		n.places[i].Segments = segmentSet(n.places[i].Segments)
 	}
-	n.places = make(map[string]triage.Place, len(places))
-	for _, p := range places {
-		p.Segments = segmentSet(p.Segments)
-		n.places[p.Key] = p
-	}
-	return n, nil
+	slices.SortStableFunc(n.places, better)
+	return n, err
 }
 
 // entries reads which segments retired, and returns those that were born and are still there.

@@ -39,12 +39,9 @@ func makeTasks(ctx context.Context, tx pgx.Tx, volume int32, places []triage.Pla
 	}
 	places = slices.Clone(places)
 	slices.SortStableFunc(places, better)
-	numbers, keys := make([]int64, len(places)), make([]string, len(places))
-	for i, p := range places {
-		numbers[i], keys[i] = last+1+int64(i), p.Key
-	}
-	if _, err := tx.Exec(ctx, `update task_place set latest = false where volume_id = $1 and place = any ($2) and latest`, volume, keys); err != nil {
-		return nil, err
+	numbers := make([]int64, len(places))
+	for i := range places {
+		numbers[i] = last + 1 + int64(i)
 	}
 	_, err := tx.CopyFrom(ctx, pgx.Identifier{"task"}, []string{"volume_id", "number", "priority", "kind", "family", "segments"},
 		pgx.CopyFromSlice(len(places), func(i int) ([]any, error) {
@@ -68,7 +65,39 @@ func makeTasks(ctx context.Context, tx pgx.Tx, volume int32, places []triage.Pla
 	if err != nil {
 		return nil, err
 	}
+	if err := nameKeys(ctx, tx, volume, numbers, places); err != nil {
+		return nil, err
+	}
 	return numbers, note(ctx, tx, volume, numbers, "", "made", why)
+}
+
+// nameKeys writes down which task each finding's place belongs to now.
+func nameKeys(ctx context.Context, tx pgx.Tx, volume int32, numbers []int64, places []triage.Place) error {
+	owner := make(map[string]int64)
+	for i, p := range slices.Backward(places) { // so that the better place keeps a key that two have
+		for _, key := range keysOf(p) {
+			owner[key] = numbers[i]
+		}
+	}
+	keys, owners := make([]string, 0, len(owner)), make([]int64, 0, len(owner))
+	for key, number := range owner {
+		keys, owners = append(keys, key), append(owners, number)
+	}
+	_, err := tx.Exec(ctx, `
+		insert into task_key (volume_id, key, number) select $1, * from unnest($2::text[], $3::bigint[])
+		on conflict (volume_id, key) do update set number = excluded.number`, volume, keys, owners)
+	return err
+}
+
+// keysOf are the names by which a place is known again: its own, and those of its findings.
+func keysOf(p triage.Place) []string {
+	keys := []string{p.Key}
+	for _, f := range p.Findings {
+		if f.Key != "" && !slices.Contains(keys, f.Key) {
+			keys = append(keys, f.Key)
+		}
+	}
+	return keys
 }
 
 // better puts the higher priority first, and keeps a stable order among equals.

@@ -153,8 +153,8 @@ func (q *Queue) placeNow(ctx context.Context, id int32, t Task, followed int64) 
 	var stale, live bool
 	err := q.pool.QueryRow(ctx, `
 		select exists (select from segment where volume_id = $1 and segment_id = any ($2) and retired <= $3),
-		       exists (select from task_place join task using (volume_id, number)
-		                where volume_id = $1 and place = $4 and latest and state in ('open', 'claimed'))`,
+		       exists (select from task_key join task using (volume_id, number)
+		                where volume_id = $1 and key = $4 and state in ('open', 'claimed'))`,
 		id, t.Segments, followed, t.Key).Scan(&stale, &live)
 	switch {
 	case err != nil || live:
@@ -175,7 +175,7 @@ func (q *Queue) placeNow(ctx context.Context, id int32, t Task, followed int64) 
 		now = append(now, became...)
 	}
 	places, err := triage.Places(ctx, q.pool, v, now)
-	return slices.DeleteFunc(places, func(p triage.Place) bool { return p.Key != t.Key }), err
+	return slices.DeleteFunc(places, func(p triage.Place) bool { return !slices.Contains(keysOf(p), t.Key) }), err
 }
 
 // undo posts the reversal of a task's correction, and the review with it. If somebody has reversed it before, theirs
