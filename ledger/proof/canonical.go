@@ -1,7 +1,3 @@
-// Package proof makes bytes that can be hashed, and hashes that can be checked: canonical JSON (RFC 8785) and the Merkle
-// tree of RFC 6962. It reads nothing and writes nothing.
-//
-// What an entry's bytes say is the ledger's matter; that they are always the same bytes is this package's.
 package proof
 
 import (
@@ -12,7 +8,6 @@ import (
 	"unicode/utf8"
 
 	"github.com/gowebpki/jcs"
-	"golang.org/x/mod/sumdb/tlog"
 )
 
 // mostExact is 2^53: whole numbers above it are not all doubles, and canonical JSON would round them.
@@ -35,9 +30,9 @@ func Canonical(v any) ([]byte, error) {
 	return out, nil
 }
 
-// exact refuses what would not survive: Go's encoder has already replaced invalid UTF-8 by U+FFFD.
+// exact refuses what would not survive.
 func exact(b []byte) error {
-	if !utf8.Valid(b) || strings.Contains(string(b), `\ufffd`) {
+	if !utf8.Valid(b) || replaced(b) {
 		return errors.New("text is not valid UTF-8")
 	}
 	d := json.NewDecoder(strings.NewReader(string(b)))
@@ -57,5 +52,16 @@ func exact(b []byte) error {
 	}
 }
 
-// LeafHash is the hash of a leaf: SHA-256 over 0x00 and the bytes (RFC 6962, section 2.1).
-func LeafHash(b []byte) [32]byte { return tlog.RecordHash(b) }
+// replaced says whether the encoder met invalid UTF-8: it writes such a byte as an escaped U+FFFD, and a real U+FFFD as it is.
+func replaced(b []byte) bool {
+	for i := 0; i+1 < len(b); i++ {
+		if b[i] != '\\' {
+			continue
+		}
+		if strings.HasPrefix(string(b[i+1:min(len(b), i+6)]), "ufffd") {
+			return true
+		}
+		i++ // a backslash takes its next byte along, which may be a backslash itself
+	}
+	return false
+}
