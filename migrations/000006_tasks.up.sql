@@ -302,6 +302,7 @@ begin
     if exists (select from lease l where l.volume_id = volume and l.segment_id = any (t.segments)) then
         update claim set ended = 'overtaken', ended_at = now() where claim_id = t.claim_id;
         update task x set state = 'open', claim_id = null where x.volume_id = volume and x.number = moved;
+        insert into task_event (volume_id, number, what, note) values (volume, moved, 'released', 'its segment came into other hands');
         return t.assigned_to is null;
     end if;
     insert into lease (volume_id, segment_id, claim_id) select volume, s, t.claim_id from unnest(t.segments) s;

@@ -35,7 +35,8 @@ func (q *Queue) Claim(ctx context.Context, volume string, p Person, opt ClaimOpt
 		return Task{}, err
 	}
 	if opt.ID == uuid.Nil {
-		return Task{}, fault.New(fault.Invalid, "claim-id", "a claim needs an id of its own, so that a repeat is recognised").WithField("id")
+		return Task{}, fault.New(fault.Invalid, "claim-id", "a claim needs an id of its own, so that a repeat is recognised").
+			WithField("id").WithNext("make one, a UUID of version 7")
 	}
 	for range patience {
 		t, err := queryOne(ctx, q.pool, claimSQL, id, p.Handle, opt.Task, opt.Kinds, opt.Families, opt.ID, q.Lease)

@@ -9,6 +9,7 @@ import (
 	"github.com/jackc/pgx/v5"
 	"github.com/jackc/pgx/v5/pgxpool"
 
+	"fettle.example/fettle/internal/fault"
 	"fettle.example/fettle/internal/pg"
 	"fettle.example/fettle/internal/pgtest"
 	"fettle.example/fettle/ledger"
@@ -30,6 +31,7 @@ type bench struct {
 	*Queue
 	t      testing.TB
 	volume int32
+	name   string
 }
 
 // newBench returns a queue with these places, the team, and nothing else. Its invariants are checked at the end.
@@ -43,7 +45,7 @@ func newBench(t testing.TB, places ...triage.Place) *bench {
 
 func newBenchOn(t testing.TB, pool *pgxpool.Pool) *bench {
 	t.Helper()
-	b := &bench{Queue: NewQueue(ledger.New(pool), pool), t: t}
+	b := &bench{Queue: NewQueue(ledger.New(pool), pool), t: t, name: ganglion}
 	err := pool.QueryRow(t.Context(), `
 		insert into volume (name, voxel_nm, bounds_nm, seams, gaps, supervoxels, segments, contacts, rejected, assumed, synapses, nuclei,
 		                    truth, has_truth, digest, mint_from, layout)
@@ -96,7 +98,7 @@ func place(priority float64, segments ...ledger.ID) triage.Place {
 // take claims the next best task, or fails.
 func (b *bench) take(p Person) Task {
 	b.t.Helper()
-	task, err := b.Claim(b.t.Context(), ganglion, p, ClaimOptions{ID: newID(b.t)})
+	task, err := b.Claim(b.t.Context(), b.name, p, ClaimOptions{ID: newID(b.t)})
 	if err != nil {
 		b.t.Fatalf("%s claims: %v", p.Handle, err)
 	}
@@ -121,10 +123,10 @@ func (b *bench) oversleep(task Task) {
 	}
 }
 
-// get reads a task, or fails.
-func (b *bench) get1(number int64) Task {
+// read reads a task, or fails.
+func (b *bench) read(number int64) Task {
 	b.t.Helper()
-	task, err := b.Get(b.t.Context(), ganglion, number)
+	task, err := b.Get(b.t.Context(), b.name, number)
 	if err != nil {
 		b.t.Fatal(err)
 	}
@@ -190,5 +192,104 @@ func checkInvariants(t testing.TB, pool *pgxpool.Pool) {
 		if len(broken) > 0 {
 			t.Errorf("%s: not so for tasks %v", rule, broken)
 		}
+	}
+}
+
+// want fails the test unless an error has this kind and code, and says what to do next.
+func want(t testing.TB, err error, kind fault.Kind, code string) {
+	t.Helper()
+	f, ok := fault.As(err)
+	if !ok || f.Kind != kind || f.Code != code {
+		t.Errorf("got %v, want %s %s", err, kind, code)
+	} else if f.Next == "" {
+		t.Errorf("%s does not say what to do next", code)
+	}
+}
+
+// refused fails the test unless the database itself refuses a statement under this rule.
+func (b *bench) refused(rule, sql string, args ...any) {
+	b.t.Helper()
+	_, err := b.pool.Exec(b.t.Context(), sql, args...)
+	if got := pg.Constraint(err); got != rule {
+		b.t.Errorf("%s\nrefused by %q (%v), want %q", sql, got, err, rule)
+	}
+}
+
+func first[T any](_ T, err error) error { return err }
+
+func second[T, U any](_ T, _ U, err error) error { return err }
+
+func numbersOf(tasks []Task) []int64 {
+	out := make([]int64, len(tasks))
+	for i, t := range tasks {
+		out[i] = t.Number
+	}
+	return out
+}
+
+func (b *bench) release(p Person, task Task) Task {
+	b.t.Helper()
+	task, err := b.Release(b.t.Context(), p, task.Claim.ID, "later")
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	return task
+}
+
+// hire adds a proofreader.
+func (b *bench) hire(handle string) Person {
+	b.t.Helper()
+	p, err := NewPeople(b.pool).Add(b.t.Context(), Operator, handle, []Role{Proofreader})
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	return p
+}
+
+// waits lists each task's count of lines that it isn't the head of, by number.
+func (b *bench) waits() []int {
+	b.t.Helper()
+	rows, err := b.pool.Query(b.t.Context(), `select waits from task order by number`)
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	waits, err := pgx.CollectRows(rows, pgx.RowTo[int])
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	return waits
+}
+
+// left counts the tasks that are open or claimed.
+func (b *bench) left() (n int) {
+	b.t.Helper()
+	if err := b.pool.QueryRow(b.t.Context(), `select count(*) from task where state in ('open', 'claimed')`).Scan(&n); err != nil {
+		b.t.Error(err)
+	}
+	return n
+}
+
+// judge reviews a task, or fails.
+func (b *bench) judge(p Person, number int64, verdict string) Task {
+	b.t.Helper()
+	task, _, err := b.Review(b.t.Context(), b.name, number, p, verdict, "")
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	return task
+}
+
+// overtake ends an open task as an entry of somebody else would.
+func (b *bench) overtake(number int64) {
+	b.t.Helper()
+	err := pg.InTx(b.t.Context(), b.pool, func(ctx context.Context, tx pgx.Tx) error {
+		gone := []live{{number: number, lined: true}}
+		if err := leave(ctx, tx, b.volume, nil, gone); err != nil {
+			return err
+		}
+		return overtake(ctx, tx, b.volume, news{}, gone)
+	})
+	if err != nil {
+		b.t.Fatal(err)
 	}
 }

@@ -199,12 +199,12 @@ func move(ctx context.Context, tx pgx.Tx, volume int32, n news, moving []moved) 
 			return nil, err
 		}
 		var b pgx.Batch
-		b.Queue(`update task set segments = $3, priority = $4 where volume_id = $1 and number = $2`, volume, t.number, p.Segments, p.Priority)
+		b.Queue(`update task set segments = $3, priority = $4, kind = $5, family = $6 where volume_id = $1 and number = $2`,
+			volume, t.number, p.Segments, p.Priority, p.Kind, p.Family)
 		b.Queue(`
 			update task_place set probability = $3, gain = $4, minutes = $5, point_nm = $6, said = $7, findings = $8, proposal = $9, place = $10
 			 where volume_id = $1 and number = $2`,
 			volume, t.number, p.Probability, p.Gain, p.Minutes, p.Point, p.Said, findings, proposal, p.Key)
-		b.Queue(`update task set kind = $3, family = $4 where volume_id = $1 and number = $2 and (kind, family) <> ($3, $4)`, volume, t.number, p.Kind, p.Family)
 		if !slices.Equal(p.Segments, t.segments) {
 			b.Queue(`insert into task_event (volume_id, number, what, note) values ($1, $2, 'moved', $3)`, volume, t.number, n.why(t.live))
 		}

@@ -104,6 +104,11 @@ const follower = "tasks"
 // nowhere is the position of a queue that was never filled.
 const nowhere = -1
 
+// Position tells how far the queue has followed a volume's ledger, -1 when it was never filled.
+func (q *Queue) Position(ctx context.Context, v *ledger.Volume) (int64, error) {
+	return position(ctx, q.pool, v.ID())
+}
+
 // position tells how far the queue has followed the ledger.
 func position(ctx context.Context, db pg.DB, volume int32) (int64, error) {
 	var n int64

@@ -40,7 +40,8 @@ func (r Resolve) check() error {
 }
 
 func noteTooLong() error {
-	return fault.Newf(fault.Invalid, "note-long", "the note is longer than %d characters", longestNote).WithField("note")
+	return fault.Newf(fault.Invalid, "note-long", "the note is longer than %d characters", longestNote).
+		WithField("note").WithNext("say it shorter")
 }
 
 // Resolve ends a claim with an outcome. A correction's entry, the outcome and the end of the leases commit together,

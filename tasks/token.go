@@ -64,7 +64,8 @@ func (pp *People) IssueToken(ctx context.Context, by, handle, note string) (secr
 		insert into token (token_id, handle, hash, note, issued_by) values ($1, $2, $3, $4, nullif($5, 'operator'))
 		returning `+tokenColumns, id, handle, hash(secret), note, by)
 	if pg.Constraint(err) == "token_note" {
-		err = fault.New(fault.Invalid, "note-long", "the note is longer than 200 characters").WithField("note")
+		err = fault.New(fault.Invalid, "note-long", "the note is longer than 200 characters").
+			WithField("note").WithNext("say it shorter")
 	}
 	if err != nil {
 		return "", Token{}, err
