@@ -2,6 +2,7 @@ package stats
 
 import (
 	"cmp"
+	"math"
 	"slices"
 )
 
@@ -19,8 +20,12 @@ type Survival struct {
 	longest  float64
 }
 
-// SurvivalStep is the estimate after a time.
-type SurvivalStep struct{ Time, Share float64 }
+// SurvivalStep is the estimate after a time, with how many had not ended before it and how many ended at it.
+type SurvivalStep struct {
+	Time, Share   float64
+	StandardError float64 // of the share, by Greenwood's formula
+	AtRisk, Ended int
+}
 
 // KaplanMeier estimates how long things take when some were broken off. Leaving those out would bias the median down,
 // because long ones are the ones that are given up. At a tie, ends come before censorings.
@@ -30,7 +35,7 @@ func KaplanMeier(times []Duration) Survival {
 	sorted := slices.Clone(times)
 	slices.SortFunc(sorted, func(a, b Duration) int { return cmp.Compare(a.Time, b.Time) })
 	s := Survival{N: len(sorted)}
-	share := 1.0
+	share, greenwood := 1.0, 0.0
 	for i := 0; i < len(sorted); {
 		at, risk, ended := sorted[i].Time, len(sorted)-i, 0
 		for ; i < len(sorted) && sorted[i].Time == at; i++ {
@@ -42,7 +47,12 @@ func KaplanMeier(times []Duration) Survival {
 		}
 		if ended > 0 {
 			share *= 1 - float64(ended)/float64(risk)
-			s.Steps = append(s.Steps, SurvivalStep{at, share})
+			step := SurvivalStep{Time: at, Share: share, AtRisk: risk, Ended: ended}
+			if risk > ended { // at a share of 0 there is no error to state
+				greenwood += float64(ended) / (float64(risk) * float64(risk-ended))
+				step.StandardError = share * math.Sqrt(greenwood)
+			}
+			s.Steps = append(s.Steps, step)
 		}
 		s.longest = at
 	}
@@ -52,12 +62,62 @@ func KaplanMeier(times []Duration) Survival {
 // Median is the time at which the share falls below one half; where it is one half exactly, the middle of that stretch (R's
 // rule, which gives the sample's median when nothing is censored). Absent when the share never falls that low.
 func (s Survival) Median() (float64, bool) {
+	return s.reaches(func(step SurvivalStep) float64 { return step.Share })
+}
+
+// MedianInterval is where the bounds of the share, z standard errors of its logarithm away, fall below one half: the median's
+// interval by Brookmeyer and Crowley (1982, Biometrics 38:29-41), as R's survfit gives it. Either end may be absent; an absent
+// upper one means that the data end too early to tell.
+func (s Survival) MedianInterval(z float64) (lo, hi float64, okLo, okHi bool) {
+	bound := func(z float64) func(SurvivalStep) float64 {
+		return func(step SurvivalStep) float64 {
+			if step.Share == 0 {
+				return 0
+			}
+			return min(1, step.Share*math.Exp(z*step.StandardError/step.Share))
+		}
+	}
+	lo, okLo = s.reaches(bound(-z))
+	hi, okHi = s.reaches(func(step SurvivalStep) float64 {
+		if step.Share == 0 {
+			return 1 // R gives no bound there
+		}
+		return bound(z)(step)
+	})
+	return lo, hi, okLo, okHi
+}
+
+// RestrictedMean is the mean time up to a limit, the area under the curve, with its standard error (as R's survfit gives it).
+// It is defined where the median is not. Absent without observations, and beyond the longest one when that had not ended.
+func (s Survival) RestrictedMean(limit float64) (mean, standardError float64, ok bool) {
+	if s.N == 0 || limit > s.longest && s.At(limit) > 0 {
+		return 0, 0, false
+	}
+	area := make([]float64, len(s.Steps)+1) // under the curve from each step's time to the limit
+	next := limit
+	for i := len(s.Steps) - 1; i >= 0; i-- {
+		if s.Steps[i].Time < limit {
+			area[i] = area[i+1] + s.Steps[i].Share*(next-s.Steps[i].Time)
+			next = s.Steps[i].Time
+		}
+	}
+	var v float64
+	for i, step := range s.Steps {
+		if rest := step.AtRisk - step.Ended; rest > 0 {
+			v += area[i] * area[i] * float64(step.Ended) / (float64(step.AtRisk) * float64(rest))
+		}
+	}
+	return area[0] + next, math.Sqrt(v), true
+}
+
+// reaches finds where a falling curve over the steps passes one half.
+func (s Survival) reaches(height func(SurvivalStep) float64) (float64, bool) {
 	const close = 1e-9 // products of fractions that ought to be one half
 	for i, step := range s.Steps {
-		switch {
-		case step.Share < 0.5-close:
+		switch h := height(step); {
+		case h < 0.5-close:
 			return step.Time, true
-		case step.Share <= 0.5+close:
+		case h <= 0.5+close:
 			if i+1 < len(s.Steps) {
 				return (step.Time + s.Steps[i+1].Time) / 2, true
 			}

@@ -17,6 +17,9 @@ type Agreement struct {
 	// Precision, Recall and Error are the adapted Rand scores with replacement: same-same pairs over pairs that the
 	// segmentation joins, over pairs that truth joins, and 1 - 2PR/(P+R). Arganda-Carreras et al. 2015, Front. Neuroanat. 9:142.
 	Precision, Recall, Error float64
+	// Adjusted is the Rand index less what chance gives: 1 for equal partitions, about 0 for unrelated ones, negative below.
+	// Hubert & Arabie 1985, J. Classification 2:193-218. A voxel is an element, so a weight is a number of elements.
+	Adjusted float64
 }
 
 // Agree compares two partitions, given as overlaps; several rows for one pair are added up. Absent when all weights are 0.
@@ -53,5 +56,17 @@ func Agree[T, S comparable](rows []Overlap[T, S]) (a Agreement, ok bool) {
 	a.Split, a.Merge = max(0, a.Split), max(0, a.Merge)
 	a.Precision, a.Recall = both/inSegments, both/inTruth
 	a.Error = 1 - 2*a.Precision*a.Recall/(a.Precision+a.Recall)
+	a.Adjusted = adjusted(both, inTruth, inSegments, n)
 	return a, true
+}
+
+// adjusted takes sums of squared weights: pairs of elements are (x² - x)/2, and the weights of each kind add up to n.
+func adjusted(both, inTruth, inSegments, n float64) float64 {
+	pairs := func(squares float64) float64 { return (squares - n) / 2 }
+	chance := pairs(inTruth) * pairs(inSegments) / pairs(n*n)
+	most := (pairs(inTruth) + pairs(inSegments)) / 2
+	if most == chance || n == 1 {
+		return 1 // both in one block, or both in singletons
+	}
+	return (pairs(both) - chance) / (most - chance)
 }

@@ -1,43 +1,6 @@
 package stats
 
-import (
-	"math"
-
-	"gonum.org/v1/gonum/stat/distuv"
-)
-
-// Z95 is the 0.975 quantile of the normal distribution: two-sided 95 % intervals.
-const Z95 = 1.959963984540054
-
-// Wilson is the score interval of a share of k in n, with z normal quantiles on either side. Absent when n is 0.
-//
-// Wilson 1927, J. Am. Stat. Assoc. 22:209.
-func Wilson(k, n int, z float64) (lo, hi float64, ok bool) {
-	if n <= 0 {
-		return 0, 0, false
-	}
-	p, m, z2 := float64(k)/float64(n), float64(n), z*z
-	middle := p + z2/(2*m)
-	half := z * math.Sqrt(p*(1-p)/m+z2/(4*m*m))
-	whole := 1 + z2/m
-	lo, hi = max(0, (middle-half)/whole), min(1, (middle+half)/whole)
-	switch k { // exact at the ends, where rounding is not
-	case 0:
-		lo = 0
-	case n:
-		hi = 1
-	}
-	return lo, hi, true
-}
-
-// Posterior is what k hits in n tries make of a belief Beta(a, b) about a rate: its mean, and the bounds that leave out 2.5 %
-// on either side.
-//
-// Gelman et al., Bayesian Data Analysis, chapter 2.
-func Posterior(a, b float64, k, n int) (mean, lo, hi float64) {
-	d := distuv.Beta{Alpha: a + float64(k), Beta: b + float64(n-k)}
-	return d.Mean(), d.Quantile(0.025), d.Quantile(0.975)
-}
+import "math"
 
 // FisherExact is the two-sided p-value of a 2x2 table: the summed chance of all tables with the same margins that are no
 // likelier than this one. Margins of up to some thousands.
