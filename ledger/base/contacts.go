@@ -126,7 +126,7 @@ func (im *importer) judgeContacts() error {
 			"contradicts line %d, which is about the same two supervoxels (%d and %d)", first.line, im.sv.ids[first.a], im.sv.ids[first.b]))
 	})
 	if same > 0 {
-		im.warnf("%d contacts are there more than once with the same values, the first repetition on line %d", same, firstSame)
+		im.warnf("%s there more than once with the same values, the first repetition on line %d", plural(int(same), "contact is", "contacts are"), firstSame)
 	}
 	return err
 }

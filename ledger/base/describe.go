@@ -154,13 +154,14 @@ func (d *describe) bounds(info *Info, p *problems) {
 		p.add(describeFile, 0, "bounds_nm", "", "is not a box: give min and max with three numbers each")
 		return
 	}
-	info.Bounds = Bounds{Min: Point(d.BoundsNM.Min), Max: Point(d.BoundsNM.Max)}
 	for i, axis := range axes {
-		low, high := info.Bounds.Min[i], info.Bounds.Max[i]
+		low, high := d.BoundsNM.Min[i], d.BoundsNM.Max[i]
 		if low >= high || math.Abs(low) > largestNM || math.Abs(high) > largestNM {
 			p.add(describeFile, 0, "bounds_nm", fmt.Sprintf("%v to %v", low, high), "does not grow along "+axis+", or exceeds 1 m")
+			return
 		}
 	}
+	info.Bounds = Bounds{Min: Point(d.BoundsNM.Min), Max: Point(d.BoundsNM.Max)}
 }
 
 func (d *describe) planes(info *Info, p *problems) {
