@@ -242,9 +242,17 @@ create function task_claim(volume int, who text, wanted bigint, kinds text[], fa
                            out t task, out c claim)
 language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off set enable_bitmapscan = off as $$
 declare
-    alone boolean := wanted is not null
-                  or exists (select from task x where x.volume_id = volume and x.assigned_to = who and x.state = 'open');
+    alone boolean;
 begin
+    -- One claim of a person at a time: whoever asks twice waits here, and then finds the first.
+    perform from person where handle = who and left_at is null and 'proofreader' = any (roles) for no key update;
+    if not found then
+        perform refuse('claim_proofreader', 'only a proofreader claims');
+    elsif exists (select from claim x where x.volume_id = volume and x.person = who and x.ended is null) then
+        perform refuse('claim_one_a_person', 'this person holds a task');
+    end if;
+    alone := wanted is not null
+          or exists (select from task x where x.volume_id = volume and x.assigned_to = who and x.state = 'open');
     perform task_lock(volume, alone);
     if wanted is not null then
         select * into t from task x where x.volume_id = volume and x.number = wanted for update;
@@ -346,7 +354,7 @@ begin
     elsif c.person <> who then
         perform refuse('claim_own', 'the claim is somebody else''s');
     end if;
-    perform pg_advisory_xact_lock_shared(1952543595, c.volume_id);
+    perform task_lock(c.volume_id, false);
 end $$;
 
 -- Gives up the leases of a claim's task, and lets those step forward who stand first now. A task that comes back

@@ -149,7 +149,7 @@ func TestTasksOfASegmentStandInALine(t *testing.T) {
 	if first.Number != 1 || other.Number != 4 {
 		t.Errorf("claimed %d and %d, want 1 and 4: 2 and 3 wait", first.Number, other.Number)
 	}
-	_, err := b.Claim(t.Context(), ganglion, Person{Handle: "cedar", Roles: []Role{Proofreader}}, ClaimOptions{ID: newID(t)})
+	_, err := b.Claim(t.Context(), ganglion, b.hire("elm"), ClaimOptions{ID: newID(t)})
 	want(t, err, fault.NotFound, "queue-empty")
 	b.end(alder, first, Sound)
 	if second := b.take(alder); second.Number != 2 {

@@ -1,6 +1,7 @@
 package tasks
 
 import (
+	"cmp"
 	"context"
 	"errors"
 	"fmt"
@@ -20,8 +21,12 @@ func (q *Queue) whyNot(ctx context.Context, id int32, volume string, p Person, o
 		return q.empty(ctx, id, volume, opt)
 	}
 	switch pg.Constraint(refusal) {
-	case "claim_person_fkey":
-		return unknownPerson(p.Handle)
+	case "claim_proofreader":
+		now, err := NewPeople(q.pool).Get(ctx, p.Handle)
+		if err == nil {
+			err = onlyFor(now, "claim tasks", Proofreader)
+		}
+		return cmp.Or(err, refusal)
 	case "task_known":
 		return unknownTask(opt.Task)
 	case "task_settling":

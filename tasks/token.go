@@ -51,7 +51,8 @@ func (pp *People) IssueToken(ctx context.Context, by, handle, note string) (secr
 		return "", Token{}, err
 	}
 	if p.Left {
-		return "", Token{}, fault.Newf(fault.Conflict, "person-left", "%s has left", handle)
+		return "", Token{}, fault.Newf(fault.Conflict, "person-left", "%s has left", handle).
+			WithNext("issue tokens to people who are here")
 	}
 	id, err := uuid.NewV7()
 	if err != nil {
