@@ -43,6 +43,9 @@ func (k *contract) check(next echo.HandlerFunc) echo.HandlerFunc {
 	return func(c echo.Context) error {
 		r := c.Request()
 		route, params, err := k.router.FindRoute(r)
+		if errors.Is(err, routers.ErrMethodNotAllowed) {
+			return methodUnknown()
+		}
 		if err != nil {
 			return next(c) // echo says what is wrong with the path
 		}

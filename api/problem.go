@@ -23,6 +23,12 @@ var statusOf = map[fault.Kind]int{
 	fault.Internal:        http.StatusInternalServerError,
 }
 
+// statusOfCode are the few for which HTTP has a status of its own.
+var statusOfCode = map[string]int{
+	"method-unknown": http.StatusMethodNotAllowed,
+	"request-large":  http.StatusRequestEntityTooLarge,
+}
+
 // titleOf says what all failures of a kind have in common.
 var titleOf = map[fault.Kind]string{
 	fault.Invalid:         "The request is not understood",
@@ -47,7 +53,10 @@ func (s *Server) problem(err error, c echo.Context) {
 		return
 	}
 	f := asFault(err)
-	status := statusOf[f.Kind]
+	status, special := statusOfCode[f.Code]
+	if !special {
+		status = statusOf[f.Kind]
+	}
 	body := map[string]any{}
 	maps.Copy(body, f.Data)
 	for member, value := range map[string]string{
@@ -91,7 +100,7 @@ func asFault(err error) *fault.Error {
 	case http.StatusNotFound:
 		return fault.New(fault.NotFound, "path-unknown", "there is nothing at this path").WithNext("see /v1/openapi.json")
 	case http.StatusMethodNotAllowed:
-		return fault.New(fault.Invalid, "method-unknown", "this path does not take that method").WithNext("see /v1/openapi.json")
+		return methodUnknown()
 	case http.StatusRequestEntityTooLarge:
 		return fault.New(fault.Invalid, "request-large", "the request is larger than "+bodyMost+"B").WithNext("send it in parts")
 	}
@@ -99,4 +108,8 @@ func asFault(err error) *fault.Error {
 		return fault.New(fault.Invalid, "request-malformed", "the request is not understood").WithNext("see /v1/openapi.json").Wrap(err)
 	}
 	return fault.New(fault.Internal, "internal", "the server failed").Wrap(err)
+}
+
+func methodUnknown() *fault.Error {
+	return fault.New(fault.Invalid, "method-unknown", "this path does not take that method").WithNext("see /v1/openapi.json")
 }

@@ -218,7 +218,7 @@ type AssignRequest struct {
 type Assigned struct {
 	Count int `json:"count"`
 
-	// Tasks which ones
+	// Tasks which ones, when the best were asked for
 	Tasks *[]int64 `json:"tasks,omitempty"`
 }
 
@@ -563,7 +563,7 @@ type Point = []float64
 
 // Problem defines model for Problem.
 type Problem struct {
-	// Code stable
+	// Code stable, for programs
 	Code   string  `json:"code"`
 	Detail *string `json:"detail,omitempty"`
 
@@ -609,7 +609,7 @@ type Quality struct {
 	NotScoredVoxels int64   `json:"not_scored_voxels"`
 	Position        int64   `json:"position"`
 
-	// RandError adapted Rand error
+	// RandError adapted Rand error, pairs with replacement
 	RandError     float64 `json:"rand_error"`
 	RandPrecision float64 `json:"rand_precision"`
 	RandRecall    float64 `json:"rand_recall"`
