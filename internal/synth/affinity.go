@@ -18,10 +18,15 @@ func (t *tissue) firm(a, b int) float64 {
 	return 1 - 0.2*u*u*u
 }
 
-// passing draws the affinity of two neurites that pass each other: low, now and then doubtful.
-func (t *tissue) passing() float64 {
+// passing draws the affinity of two neurites that pass each other: low, now and then doubtful. Two of one cell look alike, so the
+// model is less sure that they are apart.
+func (t *tissue) passing(a, b int) float64 {
 	if t.rng.Float64() < 0.01 {
 		return t.between(0.15, 0.45)
 	}
-	return min(0.45, math.Exp(-4.4+t.rng.NormFloat64()))
+	usual := -4.4 // natural logarithm of the median
+	if t.pieces[a].cell == t.pieces[b].cell {
+		usual = -3
+	}
+	return min(0.45, math.Exp(usual+t.rng.NormFloat64()))
 }

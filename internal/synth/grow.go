@@ -44,6 +44,7 @@ func (t *tissue) placeSomata(n int) {
 func (t *tissue) grow(k, pieces int) {
 	c := &t.cells[k]
 	c.first = len(t.pieces)
+	t.grown = newNear(1200)
 	middle := point{t.size[0] / 2, t.size[1] / 2, t.size[2] / 2}
 	in := c.centre.towards(middle.plus(t.anyway(), 0.15*t.size.norm()))
 	from := t.growSoma(k, in)
@@ -137,19 +138,22 @@ func (t *tissue) fork(tip *cone) cone {
 	return other
 }
 
-// advance grows a tip by one piece. It ends at the block's faces, and where it can't go round a soma.
+// advance grows a tip by one piece. It ends at the block's faces, and where it can get neither round a soma nor out of the way of
+// its own cell.
 func (t *tissue) advance(tip *cone) bool {
 	tip.dir = tip.dir.plus(t.anyway(), wander).unit()
 	from := t.pieces[tip.from]
 	long := step * t.between(0.8, 1.2)
 	at := from.at.plus(tip.dir, long)
-	if c := t.bodyAt(at, from); c >= 0 {
+	if c := t.bodyAt(at, from); c >= 0 { // round it
 		tip.dir = tip.dir.plus(t.cells[c].centre.towards(at), 1.5).unit()
-		if at = from.at.plus(tip.dir, long); t.bodyAt(at, from) >= 0 {
-			return false
-		}
+		at = from.at.plus(tip.dir, long)
 	}
-	if !t.inside(at) {
+	if own := t.meets(at, tip); own >= 0 { // away from it
+		tip.dir = tip.dir.plus(t.pieces[own].at.towards(at), 1).unit()
+		at = from.at.plus(tip.dir, long)
+	}
+	if !t.inside(at) || t.bodyAt(at, from) >= 0 || t.meets(at, tip) >= 0 {
 		return false
 	}
 	thin, radius := thinDendrite, tip.radius
@@ -169,6 +173,18 @@ func (t *tissue) advance(tip *cone) bool {
 	}
 	tip.from = p
 	return true
+}
+
+// meets finds a piece of its own cell that a tip would touch: branches of a cell avoid each other.
+func (t *tissue) meets(at point, tip *cone) int {
+	met := -1
+	t.grown.each(at, func(i int) {
+		p := t.pieces[i]
+		if met < 0 && p.at.distance(at) < p.radius+tip.radius+cleft+loose && !t.kin(i, tip.from) {
+			met = i
+		}
+	})
+	return met
 }
 
 // bodyAt finds the soma that a piece would grow into, its own one when it is still leaving it excepted.

@@ -4,31 +4,36 @@ import "math"
 
 // near finds pieces by place: a grid of cubes.
 type near struct {
-	pieces []piece
-	cubes  map[[3]int32][]int32
+	side  float64 // of a cube, nm
+	cubes map[[3]int32][]int32
 }
 
-const cube = 2500.0 // nm; no two pieces touch over more
+func newNear(side float64) *near { return &near{side, make(map[[3]int32][]int32)} }
 
+// near holds all pieces; no two touch over more than a cube's side.
 func (t *tissue) near() *near {
-	n := &near{pieces: t.pieces, cubes: make(map[[3]int32][]int32)}
+	n := newNear(2500)
 	for i, p := range t.pieces {
-		c := cubeOf(p.at)
-		n.cubes[c] = append(n.cubes[c], int32(i))
+		n.add(p.at, i)
 	}
 	return n
 }
 
-func cubeOf(p point) (c [3]int32) {
+func (n *near) add(at point, i int) {
+	c := n.cube(at)
+	n.cubes[c] = append(n.cubes[c], int32(i))
+}
+
+func (n *near) cube(p point) (c [3]int32) {
 	for k := range p {
-		c[k] = int32(math.Floor(p[k] / cube))
+		c[k] = int32(math.Floor(p[k] / n.side))
 	}
 	return c
 }
 
-// each visits the pieces within a cube's length of a point, always in the same order.
+// each visits the pieces within a cube's side of a point, always in the same order.
 func (n *near) each(at point, visit func(i int)) {
-	c := cubeOf(at)
+	c := n.cube(at)
 	for x := c[0] - 1; x <= c[0]+1; x++ {
 		for y := c[1] - 1; y <= c[1]+1; y++ {
 			for z := c[2] - 1; z <= c[2]+1; z++ {
@@ -58,7 +63,7 @@ func (t *tissue) findTouches() {
 				return
 			}
 			r := min(p.radius, q.radius)
-			t.touch = append(t.touch, joint{a: i, b: j, affinity: t.passing(), area: 2000 + over*r*t.between(0.5, 1.5)})
+			t.touch = append(t.touch, joint{a: i, b: j, affinity: t.passing(i, j), area: 2000 + over*r*t.between(0.5, 1.5)})
 		})
 	}
 }

@@ -15,6 +15,7 @@ type tissue struct {
 	own    []joint // contacts inside one cell, along its branches
 	touch  []joint // contacts of what merely passes by
 	reach  []reach // twigs that grew to an axon
+	grown  *near   // the pieces of the cell that grows
 }
 
 // cell is one neuron; debris has none.
@@ -60,6 +61,7 @@ type reach struct{ axon, head int }
 
 func (t *tissue) add(p piece) int {
 	t.pieces = append(t.pieces, p)
+	t.grown.add(p.at, len(t.pieces)-1)
 	return len(t.pieces) - 1
 }
 
