@@ -20,8 +20,11 @@ func (s *Server) ClaimTask(ctx context.Context, r ClaimTaskRequestObject) (Claim
 	if err != nil {
 		return nil, err
 	}
-	opt := tasks.ClaimOptions{Task: value(r.Body.Task), Families: value(r.Body.Families), ID: id}
-	opt.Kinds = each(value(r.Body.Kinds), func(k TaskKind) string { return string(k) })
+	opt := tasks.ClaimOptions{Task: value(r.Body.Task), ID: id}
+	for _, k := range value(r.Body.Kinds) {
+		opt.Kinds = append(opt.Kinds, string(k))
+	}
+	opt.Families = append(opt.Families, value(r.Body.Families)...)
 	t, err := s.Queue.Claim(ctx, r.Volume, caller(ctx), opt)
 	return ClaimTask201JSONResponse(toTask(t)), err
 }
