@@ -187,7 +187,7 @@ func (q *Queue) Extend(ctx context.Context, p Person, claim uuid.UUID) (Claim, e
 // Release gives a task back. Releasing it again does nothing.
 func (q *Queue) Release(ctx context.Context, p Person, claim uuid.UUID, reason string) (Task, error) {
 	err := again(func() error {
-		_, err := q.pool.Exec(ctx, `select claim_end($1, $2, 'released', $3)`, claim, p.Handle, reason)
+		_, err := q.pool.Exec(ctx, `select claim_give_up($1, $2, 'released', $3)`, claim, p.Handle, reason)
 		return err
 	})
 	if err != nil && pg.Constraint(err) != "claim_live" {
@@ -236,7 +236,7 @@ func (q *Queue) Expire(ctx context.Context) (int, error) {
 // expire ends one claim if it has run out. Somebody may have ended or extended it meanwhile: then it does nothing.
 func (q *Queue) expire(ctx context.Context, claim uuid.UUID) (ran bool, err error) {
 	err = again(func() error {
-		return q.pool.QueryRow(ctx, `select claim_end($1, null, 'expired', '')`, claim).Scan(&ran)
+		return q.pool.QueryRow(ctx, `select claim_give_up($1, null, 'expired', '')`, claim).Scan(&ran)
 	})
 	if pg.Constraint(err) == "claim_live" {
 		err = nil

@@ -199,7 +199,7 @@ func move(ctx context.Context, tx pgx.Tx, volume int32, n news, moving []moved) 
 			return nil, err
 		}
 		var b pgx.Batch
-		b.Queue(`update task set segments = $3, priority = $4, kind = $5, family = $6 where volume_id = $1 and number = $2`,
+		b.Queue(`update task set segments = $3::bigint[], priority = $4::float8, kind = $5::text, family = $6 where volume_id = $1 and number = $2`,
 			volume, t.number, p.Segments, p.Priority, p.Kind, p.Family)
 		b.Queue(`
 			update task_place set probability = $3, gain = $4, minutes = $5, point_nm = $6, said = $7, findings = $8, proposal = $9, place = $10

@@ -95,15 +95,11 @@ func TestTheDatabaseKeepsTheHistory(t *testing.T) {
 func TestTheDatabaseTakesNoHalfTask(t *testing.T) {
 	t.Parallel()
 	b := newBench(t)
-	const insert = `insert into task (volume_id, number, priority, kind, family, segments) values ($1, `
-	for _, values := range []string{
-		`1, 1, 'false-merge', 'size', '{}')`,      // no segment
-		`1, 1, 'odd', 'size', '{1}')`,             // an unknown kind
-		`1, 'NaN', 'false-merge', 'size', '{1}')`, // no worth
-		`0, 1, 'false-merge', 'size', '{1}')`,     // no number
-	} {
-		b.refused("task_whole", insert+values, b.volume)
-	}
+	const insert = `insert into task (volume_id, number, priority, kind, family, segments) values ($1, 1, `
+	b.refused("task_segments", insert+`1, 'false-merge', 'size', '{}')`, b.volume)
+	b.refused("task_segments", insert+`1, 'false-merge', 'size', '{null}')`, b.volume)
+	b.refused("task_kind", insert+`1, 'odd', 'size', '{1}')`, b.volume)
+	b.refused("task_worth", insert+`'NaN', 'false-merge', 'size', '{1}')`, b.volume)
 	b.refused("task_step", `
 		insert into task (volume_id, number, priority, kind, family, segments, state) values ($1, 1, 1, 'false-merge', 'size', '{1}', 'resolved')`, b.volume)
 }

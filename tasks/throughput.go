@@ -7,6 +7,7 @@ import (
 	"time"
 
 	"github.com/jackc/pgx/v5"
+	"github.com/jackc/pgx/v5/pgtype"
 
 	"fettle.example/fettle/internal/stats"
 )
@@ -71,19 +72,12 @@ func (q *Queue) Throughput(ctx context.Context, volume string, f ThroughputFilte
 	if err != nil {
 		return nil, err
 	}
-	bound := func(t time.Time) *time.Time {
-		if t.IsZero() {
-			return nil
-		}
-		return &t
-	}
 	rows, err := q.pool.Query(ctx, `
 		select c.person, t.kind, c.claimed_at, c.until, c.ended_at, coalesce(c.ended, ''), coalesce(c.outcome, ''), coalesce(r.verdict, '')
 		  from claim c join task t using (volume_id, number) left join review r on r.claim_id = c.claim_id
 		 where c.volume_id = $1 and ($2 = '' or c.person = $2)
-		   and ($3::timestamptz is null or coalesce(c.ended_at, c.claimed_at) >= $3)
-		   and ($4::timestamptz is null or coalesce(c.ended_at, c.claimed_at) < $4)
-		 order by c.person, c.claimed_at`, id, f.Person, bound(f.From), bound(f.To))
+		   and (c.ended is not null and c.ended_at >= $3 and c.ended_at < $4 or c.ended is null and c.claimed_at >= $3 and c.claimed_at < $4)
+		 order by c.person, c.claimed_at`, id, f.Person, bound(f.From, pgtype.NegativeInfinity), bound(f.To, pgtype.Infinity))
 	if err != nil {
 		return nil, err
 	}
@@ -99,6 +93,14 @@ func (q *Queue) Throughput(ctx context.Context, volume string, f ThroughputFilte
 		zone = time.UTC
 	}
 	return byDay(holds, zone, time.Now()), nil
+}
+
+// bound is a bound of time, or an infinite one when none is set.
+func bound(t time.Time, none pgtype.InfinityModifier) pgtype.Timestamptz {
+	if t.IsZero() {
+		return pgtype.Timestamptz{InfinityModifier: none, Valid: true}
+	}
+	return pgtype.Timestamptz{Time: t, Valid: true}
 }
 
 // byDay sums up claims, which are in order of person and start.
