@@ -78,4 +78,19 @@ create table base_nucleus (
 comment on column base_nucleus.supervoxel is 'its ordinal';
 create index base_nucleus_supervoxel on base_nucleus (volume_id, supervoxel);
 
+-- The other half of the truth: entries name what a base says, so it never changes under them.
+create function base_is_final() returns trigger language plpgsql as $$
+begin
+    raise exception 'what was delivered is never changed; import a new delivery under another name'
+        using errcode = 'FE004', constraint = 'base_is_final';
+end $$;
+create trigger base_is_final before update or delete or truncate on volume
+    for each statement execute function base_is_final();
+create trigger base_is_final before update or delete or truncate on base_block
+    for each statement execute function base_is_final();
+create trigger base_is_final before update or delete or truncate on base_synapse
+    for each statement execute function base_is_final();
+create trigger base_is_final before update or delete or truncate on base_nucleus
+    for each statement execute function base_is_final();
+
 insert into schema_done (version) values (2);

@@ -3,7 +3,6 @@ package base
 import (
 	"bufio"
 	"bytes"
-	"compress/gzip"
 	"errors"
 	"io"
 	"math"
@@ -11,6 +10,8 @@ import (
 	"strconv"
 	"strings"
 	"unicode/utf8"
+
+	"github.com/klauspost/compress/gzip"
 )
 
 // longestLine is far beyond any honest line; it bounds what a broken file can make us hold.

@@ -17,17 +17,17 @@ type record[T any] struct {
 }
 
 // sorterHolds is how many bytes of records a sorter holds before it writes a sorted run to a file.
-const sorterHolds = 32 << 20
+const sorterHolds = 16 << 20
 
 // sorter sorts any number of records in bounded memory: sorted runs in temporary files, merged while they are read
 // (the textbook's external merge sort).
 type sorter[T any] struct {
 	record[T]
-	dir  string
-	hold []T
-	most int
-	runs []string
-	n    int64
+	dir   string
+	hold  []T
+	spare []T // room for sorting
+	most  int
+	runs  []string
 }
 
 func newSorter[T any](dir string, r record[T]) *sorter[T] {
@@ -36,7 +36,6 @@ func newSorter[T any](dir string, r record[T]) *sorter[T] {
 
 // add takes a record in. After each it must not be called again.
 func (s *sorter[T]) add(x T) error {
-	s.n++
 	s.hold = append(s.hold, x)
 	if len(s.hold) < s.most {
 		return nil
@@ -44,14 +43,15 @@ func (s *sorter[T]) add(x T) error {
 	return s.spill()
 }
 
-func (s *sorter[T]) sortHeld() { s.hold = radixSort(s.hold, s.key) }
+func (s *sorter[T]) sortHeld() { s.hold, s.spare = radixSort(s.hold, s.spare, s.key) }
 
 // keyBytes is the length of a key.
 const keyBytes = 16
 
 // radixSort sorts by the bytes of the keys, the lowest first, passing over bytes that are the same in all. O(n) for each
-// of the others; several times as fast as comparing. It returns the sorted slice, which may be another one.
-func radixSort[T any](a []T, key func(T) (high, low uint64)) []T {
+// of the others; several times as fast as comparing. It needs room for as many and returns that too, since either may hold
+// the result.
+func radixSort[T any](a, spare []T, key func(T) (high, low uint64)) (sorted, room []T) {
 	var counts [keyBytes][256]int
 	for _, x := range a {
 		high, low := key(x)
@@ -60,7 +60,10 @@ func radixSort[T any](a []T, key func(T) (high, low uint64)) []T {
 			counts[b+8][byte(high>>(8*b))]++
 		}
 	}
-	spare := make([]T, len(a))
+	if cap(spare) < len(a) {
+		spare = make([]T, len(a))
+	}
+	spare = spare[:len(a)]
 	for b := range keyBytes {
 		at, next, alike := &counts[b], 0, false
 		for v, n := range at {
@@ -82,7 +85,7 @@ func radixSort[T any](a []T, key func(T) (high, low uint64)) []T {
 		}
 		a, spare = spare, a
 	}
-	return a
+	return a, spare
 }
 
 func (s *sorter[T]) spill() (err error) {
@@ -113,13 +116,14 @@ func (s *sorter[T]) spill() (err error) {
 func (s *sorter[T]) sorted() (*merged[T], error) {
 	if len(s.runs) == 0 {
 		s.sortHeld()
+		s.spare = nil
 		return &merged[T]{record: s.record, held: s.hold}, nil
 	}
 	if len(s.hold) > 0 {
 		if err := s.spill(); err != nil {
 			return nil, err
 		}
-		s.hold = nil
+		s.hold, s.spare = nil, nil
 	}
 	m := &merged[T]{record: s.record}
 	for _, name := range s.runs {
@@ -146,7 +150,7 @@ func (s *sorter[T]) drop() {
 	for _, name := range s.runs {
 		os.Remove(name) //nolint:errcheck // the whole folder goes at the end
 	}
-	s.hold, s.runs = nil, nil
+	s.hold, s.spare, s.runs = nil, nil, nil
 }
 
 // merged yields records in order.

@@ -4,6 +4,7 @@ import (
 	"context"
 	"encoding/hex"
 	"encoding/json"
+	"fmt"
 
 	"github.com/jackc/pgx/v5"
 	"github.com/jackc/pgx/v5/pgxpool"
@@ -41,8 +42,11 @@ func (im *importer) store(pool *pgxpool.Pool) error {
 		}
 		return nil
 	})
-	if pg.Constraint(err) == "volume_name" {
+	switch {
+	case pg.Constraint(err) == "volume_name":
 		return im.taken()
+	case err != nil && im.ctx.Err() != nil: // what the connection says then is only how it ended
+		return fmt.Errorf("the import was ended: %w", im.ctx.Err())
 	}
 	return err
 }

@@ -82,7 +82,7 @@ func (b *Base) View(ctx context.Context, db pg.DB, ranges []Range) (*View, error
 	v := &View{
 		VoxelNM: b.info.VoxelNM, Bounds: b.info.Bounds, Seams: b.info.Seams, Gaps: b.info.Gaps,
 		Ordinals: make([]uint32, 0, c.n), IDs: make([]ID, 0, c.n), Points: make([]Point, c.n),
-		Voxels: make([]int64, c.n), Radius: make([]float64, c.n),
+		Voxels: make([]int64, c.n), Radius: make([]float64, c.n), Contacts: make([]Contact, 0, 2*c.n),
 	}
 	for _, r := range ranges {
 		for g := r.Lo; g < r.Hi; g++ {
