@@ -1,0 +1,73 @@
+package main
+
+import (
+	"fmt"
+
+	"github.com/spf13/cobra"
+)
+
+func (o *operator) serveCommand() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "serve",
+		Short: "Serve the API, and work in the background unless --no-worker",
+		Args:  cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			return o.with(cmd.Context(), func(d *Daemon) error {
+				return d.Run(cmd.Context(), true, !o.config.NoWorker, func(address string) {
+					fmt.Fprintf(o.out, "listening on http://%s\n", address)
+				})
+			})
+		},
+	}
+	o.use(cmd, "database", "fetch-postgres", "listen", "no-worker")
+	return cmd
+}
+
+func (o *operator) workCommand() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "work",
+		Short: "Work in the background only: triage what changed, keep the queue, expire claims",
+		Args:  cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			return o.with(cmd.Context(), func(d *Daemon) error {
+				return d.Run(cmd.Context(), false, true, func(string) { fmt.Fprintln(o.out, "working") })
+			})
+		},
+	}
+	o.use(cmd, "database", "fetch-postgres")
+	return cmd
+}
+
+func (o *operator) migrateCommand() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "migrate",
+		Short: "Bring the database up to date (every other command does so too)",
+		Args:  cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			return o.with(cmd.Context(), func(*Daemon) error {
+				_, err := fmt.Fprintln(o.out, "the database is up to date")
+				return err
+			})
+		},
+	}
+	o.use(cmd, "database", "fetch-postgres")
+	return cmd
+}
+
+func (o *operator) postgresCommand() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "postgres",
+		Short: "Run the private PostgreSQL alone, for psql and backups, until interrupted",
+		Args:  cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			o.config.Database = ""
+			return o.with(cmd.Context(), func(d *Daemon) error {
+				fmt.Fprintf(o.out, "psql '%s'\n", d.address)
+				<-cmd.Context().Done()
+				return nil
+			})
+		},
+	}
+	o.use(cmd, "fetch-postgres")
+	return cmd
+}
