@@ -95,8 +95,11 @@ func readPieces(ctx context.Context, tx pgx.Tx, volume int32, from int64, into *
 }
 
 func readSegments(ctx context.Context, tx pgx.Tx, volume int32, from int64, into *change) error {
+	// From the start every row counts; later only those that the entries since name.
 	rows, err := tx.Query(ctx, segmentColumns+`
-		 where volume_id = $1 and ((retired > $2 and born <= $2) or (born > $2 and retired is null))`, volume, from)
+		 where volume_id = $1 and ((retired > $2 and born <= $2) or (born > $2 and retired is null))
+		   and ($2 = 0 or segment_id in (
+		       select id from entry e, unnest(e.before || e.after) id where e.volume_id = $1 and e.position > $2))`, volume, from)
 	if err != nil {
 		return err
 	}

@@ -97,12 +97,12 @@ func (v *Volume) AnchorEntries(ctx context.Context, anchor ID) ([]Entry, error) 
 	rows, err := v.pool.Query(ctx, `
 		with stay as (
 		     select grp, from_position, to_position from piece p
-		      where int4range(p.volume_id, p.volume_id, '[]') && int4range($1, $1, '[]') and int8range(p.lo, p.hi) @> $2::bigint)
+		      where int8range((p.volume_id::bigint << 32) + p.lo, (p.volume_id::bigint << 32) + p.hi) @> (($1::bigint << 32) + $2::bigint))
 		select s.born from stay join segment s on s.volume_id = $1 and s.grp = stay.grp
 		    and s.born >= stay.from_position and (stay.to_position is null or s.born < stay.to_position)
 		union
 		select s.born from segment s
-		 where s.volume_id = $1 and s.grp = $3 and s.born > 0
+		 where s.volume_id = $1::int and s.grp = $3 and s.born > 0
 		   and not exists (select from stay where s.born >= from_position and (to_position is null or s.born < to_position))
 		order by 1`, v.info.VolumeID, g, home)
 	if err != nil {

@@ -6,6 +6,7 @@ import (
 	"sync"
 	"time"
 
+	"github.com/google/uuid"
 	"github.com/jackc/pgx/v5/pgconn"
 
 	"fettle.example/fettle/internal/fault"
@@ -35,7 +36,8 @@ type postLine struct {
 
 type waiting struct {
 	ctx        context.Context
-	plan       *plan
+	id         uuid.UUID
+	plan       func(s *state) (*plan, error) // worked out beforehand, or on the state when the turn has come
 	companions []Companion
 	done       chan posted
 }
@@ -51,11 +53,11 @@ type posted struct {
 // same draft again, with the same id, returns the entry that was stored the first time. When ctx ends early the
 // entry may or may not have been posted: asking again with the same id tells.
 func (v *Volume) Post(ctx context.Context, d Draft, companions ...Companion) (Entry, error) {
-	p, err := v.plan(ctx, d)
+	plan, err := v.planLater(ctx, d)
 	if err != nil {
 		return v.already(ctx, d, err)
 	}
-	w := &waiting{ctx: ctx, plan: p, companions: companions, done: make(chan posted, 1)}
+	w := &waiting{ctx: ctx, id: d.ID, plan: plan, companions: companions, done: make(chan posted, 1)}
 	v.line.mu.Lock()
 	v.line.waiting = append(v.line.waiting, w)
 	start := !v.line.posting
@@ -111,78 +113,145 @@ func (v *Volume) postWaiting() {
 	}
 }
 
-// postGroup checks each member against the state including the ones before it, writes all in one transaction, and
-// answers. If the transaction is refused the members are posted one by one, so that only the bad one fails. The
-// caller holds the write lock.
+// planLater prepares a draft for its turn. A merge is worked out when the turn has come, because that costs next to nothing and
+// needs no look at the database now; a split or a reversal is worked out here, beside other work.
+func (v *Volume) planLater(ctx context.Context, d Draft) (func(*state) (*plan, error), error) {
+	if err := d.check(); err != nil {
+		return nil, err
+	}
+	if d.Merge != nil {
+		ord, err := v.ordinals([]ID{d.Merge.A, d.Merge.B})
+		return func(s *state) (*plan, error) { return s.planMerge(d, ord[0], ord[1]) }, err
+	}
+	p, err := v.plan(ctx, d)
+	return func(*state) (*plan, error) { return p, nil }, err
+}
+
+// postTries bounds how often a group gives way to other processes.
+const postTries = 5
+
+// postGroup checks each member against the state including the ones before it, writes all in one transaction, and answers. A
+// refusal stands once the write has proved, by its compare and set, that the state was the database's; before that another
+// process may have made it out of date. If the database refuses the transaction, the members are posted one by one, so that
+// only the bad one fails. The caller holds the write lock.
 func (v *Volume) postGroup(group []*waiting) {
 	ctx, cancel := context.WithTimeout(context.Background(), postTimeout)
 	defer cancel()
-	for range 5 {
-		members, changes := v.settleGroup(group)
+	for range postTries {
+		members, changes, refused := v.settleGroup(group)
 		if len(members) == 0 {
-			return
+			if group = v.refuse(ctx, refused); len(group) == 0 {
+				return
+			}
+			continue
 		}
 		err := v.write(ctx, members, changes)
 		if err == nil {
 			for i, w := range members {
 				w.done <- posted{entry: changes[i].entry}
 			}
+			for _, r := range refused {
+				r.w.done <- posted{err: r.err}
+			}
 			return
 		}
 		for i := len(changes) - 1; i >= 0; i-- {
 			v.state.retreat(changes[i])
 		}
-		var refused *pgconn.PgError
-		switch {
-		case pg.Constraint(err) == "ledger_advance":
-			// Another process posted first. Read what it did and try again.
-			if err := v.catchUp(ctx); err != nil {
-				answerAll(members, err)
-				return
-			}
-			group = members
-		case !errors.As(err, &refused):
-			v.recover(ctx, members, err)
-			return
-		case len(members) == 1:
-			members[0].done <- posted{err: err}
-			return
-		default:
-			for _, w := range members {
-				v.postGroup([]*waiting{w})
-			}
+		if group = v.failed(ctx, members, refused, err); len(group) == 0 {
 			return
 		}
 	}
 	answerAll(group, fault.New(fault.Busy, "volume-busy", "other processes kept posting on this volume").WithNext("try again"))
 }
 
-// settleGroup advances the state by each member in turn and answers those that do not fit.
-func (v *Volume) settleGroup(group []*waiting) (members []*waiting, changes []*change) {
+// refusal is a member that does not fit the state as it is here.
+type refusal struct {
+	w   *waiting
+	err error
+}
+
+func withRefused(members []*waiting, refused []refusal) []*waiting {
+	for _, r := range refused {
+		members = append(members, r.w)
+	}
+	return members
+}
+
+// refuse answers refusals when the state is the database's; else it brings the state up to date, and those are to be tried again.
+func (v *Volume) refuse(ctx context.Context, refused []refusal) (again []*waiting) {
+	was := v.state.position
+	if err := v.catchUp(ctx); err != nil {
+		answerAll(withRefused(nil, refused), err)
+		return nil
+	}
+	if v.state.position != was {
+		return withRefused(nil, refused)
+	}
+	for _, r := range refused {
+		r.w.done <- posted{err: r.err}
+	}
+	return nil
+}
+
+// failed deals with a group that was not written, and returns whom to try again.
+func (v *Volume) failed(ctx context.Context, members []*waiting, refused []refusal, err error) (again []*waiting) {
+	all := withRefused(members, refused)
+	var said *pgconn.PgError
+	switch {
+	case pg.Constraint(err) == "ledger_advance":
+		// Another process posted first. Read what it did and try again.
+		if err := v.catchUp(ctx); err != nil {
+			answerAll(all, err)
+			return nil
+		}
+		return all
+	case !errors.As(err, &said):
+		v.recover(ctx, members, err)
+		return withRefused(nil, refused)
+	case len(members) == 1:
+		members[0].done <- posted{err: err}
+		return withRefused(nil, refused)
+	}
+	for _, w := range all {
+		v.postGroup([]*waiting{w})
+	}
+	return nil
+}
+
+// settleGroup advances the state by each member in turn, and tells those that do not fit it.
+func (v *Volume) settleGroup(group []*waiting) (members []*waiting, changes []*change, refused []refusal) {
 	now := time.Now().UTC().Truncate(time.Microsecond)
 	for _, w := range group {
 		if err := w.ctx.Err(); err != nil {
 			w.done <- posted{err: err}
 			continue
 		}
-		c, err := v.state.settle(w.plan)
+		c, err := v.settleOne(w, now)
 		if err != nil {
-			w.done <- posted{err: err}
-			continue
-		}
-		c.entry.Volume = v.info.Name
-		c.entry.At = now
-		if now.Before(v.state.last) {
-			c.entry.At = v.state.last
-		}
-		if err := c.entry.seal(v.digest); err != nil {
-			w.done <- posted{err: err}
+			refused = append(refused, refusal{w, err})
 			continue
 		}
 		v.state.advance(c)
 		members, changes = append(members, w), append(changes, c)
 	}
-	return members, changes
+	return members, changes, refused
+}
+
+func (v *Volume) settleOne(w *waiting, now time.Time) (*change, error) {
+	p, err := w.plan(v.state)
+	if err != nil {
+		return nil, err
+	}
+	c, err := v.state.settle(p)
+	if err != nil {
+		return nil, err
+	}
+	c.entry.Volume, c.entry.At = v.info.Name, now
+	if now.Before(v.state.last) {
+		c.entry.At = v.state.last
+	}
+	return c, c.entry.seal(v.digest)
 }
 
 // recover is what happens when the connection was lost while a commit was under way, so that nobody knows whether it
@@ -198,7 +267,7 @@ func (v *Volume) recover(ctx context.Context, members []*waiting, cause error) {
 		return
 	}
 	for _, w := range members {
-		e, err := v.entryByID(ctx, w.plan.draft.ID)
+		e, err := v.entryByID(ctx, w.id)
 		if fault.KindOf(err) == fault.NotFound {
 			err = fault.New(fault.Busy, "post-interrupted", "the connection to the database was lost before the entry was stored").
 				WithNext("send it again with the same id").Wrap(cause)

@@ -88,12 +88,11 @@ func (v *Volume) segmentsThen(ctx context.Context, ord []uint32, p int64) ([]ID,
 		  from unnest($2::bigint[], $3::bigint[]) with ordinality a (g, home, i)
 		  left join lateral (
 		       select p.grp from piece p
-		        where int4range(p.volume_id, p.volume_id, '[]') && int4range($1, $1, '[]')
-		          and int8range(p.lo, p.hi) @> a.g
+		        where int8range((p.volume_id::bigint << 32) + p.lo, (p.volume_id::bigint << 32) + p.hi) @> (($1::bigint << 32) + a.g)
 		          and int8range(p.from_position, p.to_position) @> $4::bigint) p on true
 		  join lateral (
 		       select s.segment_id from segment s
-		        where s.volume_id = $1 and s.grp = coalesce(p.grp, a.home)
+		        where s.volume_id = $1::int and s.grp = coalesce(p.grp, a.home)
 		          and s.born <= $4 and (s.retired is null or s.retired > $4)
 		        order by s.born desc limit 1) s on true`,
 		v.info.VolumeID, at, home, p)

@@ -49,7 +49,9 @@ comment on column entry.content is 'the exact RFC 8785 bytes that were hashed; n
 comment on column entry.joined_links is 'supervoxel ids, two a pair, that became accepted by this entry; likewise the three beside it';
 comment on column entry.cost is 'of a split: the minimum cut, equal to the maximum flow, in 1e-6 of log-odds';
 create index entry_by_person on entry (volume_id, person, position);
-create index entry_by_time on entry (volume_id, posted_at);
+-- Times never run backwards along positions, so rows of one time lie together on disk, and a summary of each stretch of
+-- pages is enough.
+create index entry_by_time on entry using brin (posted_at);
 create index entry_by_task on entry (task_id) where task_id is not null;
 create unique index entry_reversed_once on entry (volume_id, reverses) where reverses is not null;
 
@@ -79,9 +81,10 @@ end $$;
 create trigger entry_gapless after insert on entry
     referencing new table as added for each statement execute function entry_gapless();
 
--- A segment that an entry touched. Base segments that nobody has touched have no row.
+-- A segment that an entry touched. Base segments that nobody has touched have no row. (No foreign key to volume, here and in
+-- piece: an entry's row stands for it, and five checks an entry would cost more than the entry.)
 create table segment (
-    volume_id    int    not null references volume (volume_id),
+    volume_id    int    not null,
     segment_id   bigint not null,
     grp          bigint not null,
     born         bigint not null,
@@ -102,13 +105,11 @@ comment on column segment.retired is 'the position that changed it into other se
 comment on column segment.bounds_nm is 'smallest x, y, z and largest x, y, z of its supervoxels, nm';
 create unique index segment_current on segment (volume_id, grp) where retired is null;
 create index segment_by_group on segment (volume_id, grp, born);
-create index segment_by_born on segment (volume_id, born);
-create index segment_by_retired on segment (volume_id, retired) where retired is not null;
 
 -- Which group an ordinal range belongs to, and from which position up to which. Ordinals that no row covers belong
 -- to the group of their own base segment.
 create table piece (
-    volume_id     int    not null references volume (volume_id),
+    volume_id     int    not null,
     lo            bigint not null,
     hi            bigint not null,
     grp           bigint not null,
@@ -117,15 +118,16 @@ create table piece (
     primary key (volume_id, lo, from_position),
     constraint piece_range check (lo >= 0 and hi > lo),
     constraint piece_span check (from_position > 0 and to_position > from_position),
-    -- One group a supervoxel, at any position. Plain range types, so that no extension is needed.
+    constraint piece_ordinals check (hi <= 4294967296),
+    -- One group a supervoxel, at any position. Plain range types, so that no extension is needed; the volume stands in the upper
+    -- bits of the ordinals, so that one range names both.
     constraint piece_one_group exclude using gist (
-        int4range(volume_id, volume_id, '[]') with &&,
-        int8range(lo, hi) with &&,
+        int8range((volume_id::bigint << 32) + lo, (volume_id::bigint << 32) + hi) with &&,
         int8range(from_position, to_position) with &&)
 );
-create index piece_by_group on piece (volume_id, grp, from_position);
-create index piece_by_from on piece (volume_id, from_position);
-create index piece_by_to on piece (volume_id, to_position) where to_position is not null;
+-- Rows are appended as positions grow, so summaries of stretches of pages find those that changed after one.
+create index piece_by_from on piece using brin (from_position);
+create index piece_by_to on piece using brin (to_position);
 
 -- A cell that people follow by name, pinned to a supervoxel.
 create table neuron (
