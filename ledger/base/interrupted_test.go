@@ -1,13 +1,17 @@
 package base_test
 
 import (
+	"bufio"
 	"context"
 	"errors"
 	"fmt"
+	"io"
 	"math/rand/v2"
 	"os"
+	"os/exec"
 	"path/filepath"
 	"slices"
+	"strings"
 	"syscall"
 	"testing"
 
@@ -58,6 +62,77 @@ func TestInterruptedImportLeavesNothing(t *testing.T) {
 	if err := pool.QueryRow(t.Context(), `select name from volume`).Scan(&name); err != nil || name != "invented" {
 		t.Errorf("the import that nobody interrupted stored %q, %v", name, err)
 	}
+}
+
+// TestKilledImportLeavesNothing kills a process that is storing. Its folder for temporary files goes with the next import.
+func TestKilledImportLeavesNothing(t *testing.T) {
+	t.Parallel()
+	url, temp := pgtest.URL(t), t.TempDir()
+	dir := invent(rand.New(rand.NewPCG(3, 4)), 9000).write(t, ".csv")
+	cmd := exec.Command(os.Args[0], "-test.run", "^TestMain$")
+	cmd.Env = append(os.Environ(), "FETTLE_TEST_IMPORT="+strings.Join([]string{url, dir, temp}, "\n"))
+	out, err := cmd.StdoutPipe()
+	if err != nil {
+		t.Fatal(err)
+	}
+	in, err := cmd.StdinPipe()
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer in.Close()
+	if err := cmd.Start(); err != nil {
+		t.Fatal(err)
+	}
+	defer cmd.Process.Kill() //nolint:errcheck // mostly dead by then
+	if line, err := bufio.NewReader(out).ReadString('\n'); line != "storing\n" {
+		t.Fatalf("the other process said %q, %v", line, err)
+	}
+	if err := cmd.Process.Kill(); err != nil {
+		t.Fatal(err)
+	}
+	cmd.Wait() //nolint:errcheck // killed, so it fails
+
+	left, err := filepath.Glob(filepath.Join(temp, "fettle-import-*"))
+	if err != nil || len(left) != 1 {
+		t.Fatalf("it left %v, %v; want one folder", left, err)
+	}
+	pool, err := pg.Open(t.Context(), url)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer pool.Close()
+	if n := stored(t, pool); n != 0 {
+		t.Errorf("%d rows stayed behind", n)
+	}
+	if _, err := base.Import(t.Context(), pool, dir, base.ImportOptions{TempDir: temp}); err != nil {
+		t.Fatal(err)
+	}
+	if left, err := filepath.Glob(filepath.Join(temp, "*")); err != nil || len(left) != 0 {
+		t.Errorf("%v stays in the temporary folder, %v", left, err)
+	}
+}
+
+// TestMain is the other process of the test above when it finds its instructions: it imports, says when it stores, and
+// waits there to be killed, or until the test is over.
+func TestMain(m *testing.M) {
+	todo := strings.Split(os.Getenv("FETTLE_TEST_IMPORT"), "\n")
+	if len(todo) != 3 {
+		os.Exit(m.Run())
+	}
+	ctx := context.Background()
+	pool, err := pg.Open(ctx, todo[0])
+	if err != nil {
+		fmt.Println(err)
+		os.Exit(1)
+	}
+	_, err = base.Import(ctx, pool, todo[1], base.ImportOptions{TempDir: todo[2], Progress: func(p base.Progress) {
+		if p.Stage == "storing supervoxels" && p.Done == p.Total {
+			fmt.Println("storing")
+			io.Copy(io.Discard, os.Stdin) //nolint:errcheck // ends when the test does
+		}
+	}})
+	fmt.Println(err)
+	os.Exit(1)
 }
 
 // TestLostConnectionLeavesNothing ends the session that stores, from another one.

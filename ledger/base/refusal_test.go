@@ -102,6 +102,7 @@ func TestBadDeliveriesAreRefused(t *testing.T) {
 		"negative voxels":      {"supervoxels.csv", ",4000,5500", ",-4,5500", sv(21, "voxel_count", "-4", "is not above 0")},
 		"voxels and a half":    {"supervoxels.csv", ",4000,5500", ",4000.5,5500", sv(21, "voxel_count", "4000.5", notCount)},
 		"too many voxels":      {"supervoxels.csv", ",4000,5500", ",9223372036854775808,5500", sv(21, "voxel_count", "9223372036854775808", notCount)},
+		"voxels beyond reason": {"supervoxels.csv", ",4000,5500", ",9223372036854775807,5500", sv(21, "voxel_count", "9223372036854775807", "brings the voxels of the volume to 2^63 and more")},
 		"point not a number":   {"supervoxels.csv", ",5500,5500,3500", ",NaN,5500,3500", sv(21, "x_nm", "NaN", "is not a finite number")},
 		"point infinite":       {"supervoxels.csv", ",5500,5500,3500", ",5500,-Inf,3500", sv(21, "y_nm", "-Inf", "is not a finite number")},
 		"point beyond doubles": {"supervoxels.csv", ",5500,5500,3500", ",5500,1e999,3500", sv(21, "y_nm", "1e999", "is not a finite number")},
@@ -155,7 +156,7 @@ func TestBadDeliveriesAreRefused(t *testing.T) {
 		"bounds missing":          {"volume.json", `"bounds_nm"`, `"bounds"`, in("volume.json", 0, "bounds_nm", "", "is not a box: give min and max with three numbers each")},
 		"seam of no axis":         {"volume.json", `{"axis": "z", "at_nm": 2000}`, `{"axis": "w", "at_nm": 2000}`, in("volume.json", 0, "seams.axis", "w", "is not x, y or z")},
 		"gap turned round":        {"volume.json", `"from_nm": 3200`, `"from_nm": 3300`, in("volume.json", 0, "gaps.from_nm", "", "from_nm and to_nm are not a stretch")},
-		"volume in voxels":        {"volume.json", "[6000, 6000, 4000]", "[75, 75, 10]", sv(2, "", "", "22 of 22 supervoxels lie outside bounds_nm, here the first: are these voxels instead of nm, or another volume's?")},
+		"volume in voxels":        {"volume.json", "[6000, 6000, 4000]", "[75, 75, 10]", sv(2, "", "", "22 of 22 points lie outside bounds_nm, here the first: are these voxels instead of nm, or another volume's?")},
 	} {
 		t.Run(name, func(t *testing.T) {
 			f := tinyFiles(t)
@@ -397,7 +398,7 @@ func TestOddDeliveriesAreAccepted(t *testing.T) {
 		`volume.json has a field that is not read: "made_by"`,
 		`the file readme.csv is not read: there is no table readme`,
 		`supervoxels has a column "made_by" that is not read`,
-		`1 of 22 supervoxels lie outside the volume's bounds, the first on line 22`,
+		`supervoxels has 1 point outside the volume's bounds, of 22, the first on line 22`,
 		`contacts begins with a byte-order mark`,
 		`contacts has lines that end in CR LF`,
 		`1 contact is there more than once with the same values, the first repetition on line 23`,

@@ -8,7 +8,7 @@ import (
 // ImportOptions are the choices of whoever imports.
 type ImportOptions struct {
 	Name     string         // instead of the name in volume.json
-	Progress func(Progress) // told now and then, from the importing goroutine; may be nil
+	Progress func(Progress) // told now and then, never by two goroutines at once; may be nil
 	TempDir  string         // where sorting may keep files, as large as the contacts; the system's when empty
 }
 

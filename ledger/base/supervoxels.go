@@ -45,7 +45,8 @@ func (im *importer) readSupervoxels() (*supervoxels, error) {
 	s := &supervoxels{}
 	var segment []uint64 // by row, as the others until they are ranked
 	var lines []uint32
-	outside, firstOutside := 0, int64(0)
+	outside := outside{bounds: im.info.Bounds}
+	all := int64(0) // voxels
 	err := im.each(supervoxelTable, func(r *row) error {
 		id, seg, voxels := r.cells[0].id, r.cells[1].id, r.cells[2].count
 		if r.bad() {
@@ -61,15 +62,16 @@ func (im *importer) readSupervoxels() (*supervoxels, error) {
 		if seg == 0 {
 			bad(1, seg, reasonZero)
 		}
-		if voxels < 1 {
+		switch {
+		case voxels < 1:
 			bad(2, voxels, "is not above 0")
+		case voxels > math.MaxInt64-all:
+			bad(2, voxels, "brings the voxels of the volume to 2^63 and more")
+		default:
+			all += voxels
 		}
 		at := im.point(supervoxelTable, r, 3)
-		if !im.info.Bounds.holds(at) {
-			if outside++; outside == 1 {
-				firstOutside = r.line
-			}
-		}
+		outside.see(at, r.line)
 		radius := uint32(0)
 		if c := r.cells[6]; c.given {
 			if c.number < 0 || c.number > largestNM {
@@ -89,21 +91,42 @@ func (im *importer) readSupervoxels() (*supervoxels, error) {
 		return nil, err
 	}
 	s.gaps = s.gaps || s.len() == 0
-	im.judgeOutside(s.len(), outside, firstOutside)
+	im.judgeOutside(s.len(), outside)
 	im.rankSupervoxels(s, segment, lines)
 	return s, nil
 }
 
-// judgeOutside: some pieces at the rim may stick out; when most do, the table and volume.json disagree.
-func (im *importer) judgeOutside(all, outside int, first int64) {
-	switch {
-	case outside == 0 || im.info.Bounds == Bounds{}:
-	case outside > all/2:
-		im.problems.add(supervoxelTable.name, first, "", "", fmt.Sprintf(
-			"%d of %d supervoxels lie outside bounds_nm, here the first: are these voxels instead of nm, or another volume's?", outside, all))
-	default:
-		im.warnf("%d of %d supervoxels lie outside the volume's bounds, the first on line %d", outside, all, first)
+// outside counts points beyond the volume's bounds.
+type outside struct {
+	bounds Bounds // zero when volume.json has none that do
+	n      int
+	first  int64 // line
+}
+
+func (o *outside) see(p [3]int32, line int64) {
+	if o.bounds == (Bounds{}) || o.bounds.holds(p) {
+		return
 	}
+	if o.n++; o.n == 1 {
+		o.first = line
+	}
+}
+
+// warnOutside: some points at the rim may stick out.
+func (im *importer) warnOutside(t *table, all int, o outside) {
+	if o.n > 0 {
+		im.warnf("%s has %s outside the volume's bounds, of %d, the first on line %d", t.name, plural(o.n, "point", "points"), all, o.first)
+	}
+}
+
+// judgeOutside: when most supervoxels lie outside, the table and volume.json are not of one volume.
+func (im *importer) judgeOutside(all int, o outside) {
+	if o.n <= all/2 {
+		im.warnOutside(supervoxelTable, all, o)
+		return
+	}
+	im.problems.add(supervoxelTable.name, o.first, "", "", fmt.Sprintf(
+		"%d of %d points lie outside bounds_nm, here the first: are these voxels instead of nm, or another volume's?", o.n, all))
 }
 
 // rankSupervoxels sorts by id and finds duplicates.

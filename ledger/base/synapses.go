@@ -89,6 +89,7 @@ func (im *importer) readSynapses() error {
 	seen := newSorter(im.tmp, seenIDs)
 	im.synapses = newSorter(im.tmp, synapseRecords)
 	im.transmitters = []string{""}
+	outside, all := outside{bounds: im.info.Bounds}, 0
 	err := im.each(t, func(r *row) error {
 		if r.bad() {
 			return nil
@@ -97,6 +98,8 @@ func (im *importer) readSynapses() error {
 			im.problems.add(t.name, r.line, "confidence", fmt.Sprint(p), "is not between 0 and 1")
 		}
 		s := synapseRecord{id: uint64(r.cells[0].id), at: im.point(t, r, 3), confidence: r.cells[6].number}
+		outside.see(s.at, r.line)
+		all++
 		var okPre, okPost bool
 		s.pre, okPre = im.supervoxel(t, r, 1)
 		s.post, okPost = im.supervoxel(t, r, 2)
@@ -118,6 +121,7 @@ func (im *importer) readSynapses() error {
 	if err != nil {
 		return err
 	}
+	im.warnOutside(t, all, outside)
 	return im.noteDuplicates(t, seen)
 }
 
