@@ -15,6 +15,7 @@ const (
 	bouton       = 0.12 // share of axon pieces that are swollen
 	sided        = 0.25 // share of thick pieces that lie two abreast
 	thick        = 330.0
+	ownReach     = 1200.0 // how far a tip feels for its own cell; no two branches touch over more
 )
 
 // placeSomata puts the cells' bodies into the rind, apart from one another.
@@ -44,7 +45,7 @@ func (t *tissue) placeSomata(n int) {
 func (t *tissue) grow(k, pieces int) {
 	c := &t.cells[k]
 	c.first = len(t.pieces)
-	t.grown = newNear(1200)
+	t.grown = newNear(ownReach)
 	middle := point{t.size[0] / 2, t.size[1] / 2, t.size[2] / 2}
 	in := c.centre.towards(middle.plus(t.anyway(), 0.15*t.size.norm()))
 	from := t.growSoma(k, in)
@@ -167,9 +168,12 @@ func (t *tissue) advance(tip *cone) bool {
 	p := t.add(piece{at: at, radius: radius, length: long, cell: from.cell, parent: tip.from, part: tip.part})
 	t.join(tip.from, p)
 	if radius > thick && from.part != soma && t.rng.Float64() < sided {
-		beside := t.add(piece{at: at.plus(t.anyway(), 0.7*radius), radius: 0.6 * radius, length: long, cell: from.cell, parent: p, part: tip.part})
-		t.join(p, beside)
-		t.join(tip.from, beside)
+		side := piece{at: at.plus(t.anyway(), 0.7*radius), radius: 0.6 * radius, length: long, cell: from.cell, parent: p, part: tip.part}
+		if t.inside(side.at) {
+			beside := t.add(side)
+			t.join(p, beside)
+			t.join(tip.from, beside)
+		}
 	}
 	tip.from = p
 	return true

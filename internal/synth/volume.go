@@ -24,7 +24,10 @@ const (
 // Write invents a volume, writes it as a delivery folder, and returns its planted errors.
 func Write(dir string, opt Options) (*Answers, error) {
 	rows, shape, answers := Make(opt)
-	return answers, rows.Write(dir, shape)
+	if err := rows.Write(dir, shape); err != nil {
+		return nil, err
+	}
+	return answers, nil
 }
 
 // Make invents a volume: neurons that grow through a block with two seams and a gap, cut into supervoxels, agglomerated with
@@ -55,8 +58,9 @@ func newTissue(opt Options) *tissue {
 	size := point{side, side, math.Round(0.75*side/1000) * 1000}
 	nm := func(share float64) float64 { return math.Round(share*size[2]/30) * 30 }
 	return &tissue{
-		rng:  rand.New(rand.NewPCG(opt.Seed, 2)),
-		size: size,
+		rng:   rand.New(rand.NewPCG(opt.Seed, 2)),
+		size:  size,
+		grown: newNear(ownReach),
 		shape: Shape{VoxelNM: [3]float64{8, 8, 30}, Max: size,
 			Seams: []Seam{{"z", nm(0.31)}, {"z", nm(0.68)}},
 			Gaps:  []Gap{{"z", nm(0.5), nm(0.5) + 180}}},

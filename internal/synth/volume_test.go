@@ -41,7 +41,7 @@ func TestSameSeedSameFiles(t *testing.T) {
 func TestDemonstrationHasWhatItPromises(t *testing.T) {
 	t.Parallel()
 	for seed := range uint64(2) {
-		r, _, a := Make(Options{Seed: seed})
+		r, shape, a := Make(Options{Seed: seed})
 		if r.Name != "cricket-ganglion" || len(r.Nuclei) != 24 {
 			t.Errorf("%s with %d cells", r.Name, len(r.Nuclei))
 		}
@@ -50,6 +50,11 @@ func TestDemonstrationHasWhatItPromises(t *testing.T) {
 		}
 		if m, s := Places(a.FalseMerges), Places(a.FalseSplits); m < 30 || s < 60 {
 			t.Errorf("seed %d: %d false merges, %d false splits", seed, m, s)
+		}
+		for _, v := range r.Supervoxels {
+			if at := (point{v.X, v.Y, v.Z}); min(v.X, v.Y, v.Z) < 0 || at[0] > shape.Max[0] || at[1] > shape.Max[1] || at[2] > shape.Max[2] {
+				t.Fatalf("seed %d: supervoxel outside the block: %+v", seed, v)
+			}
 		}
 		if len(r.Synapses) < 1000 {
 			t.Errorf("seed %d: %d synapses", seed, len(r.Synapses))
