@@ -17,11 +17,12 @@ const (
 	thicker    = 1.4    // times its parent's radius: a daughter that no neurite has
 )
 
-// The three priors are our own; the thresholds too, for no published ones were found.
+// How many times likelier each sign is at a false merge than at a sound weak place. Our own estimates, and so are the thresholds,
+// for no published ones were found; to be learned from outcomes.
 const (
-	crossingPrior = 0.4
-	turningPrior  = 0.05
-	thickPrior    = 0.03
+	crossingRatio = 20.0
+	turningRatio  = 4.0
+	thickRatio    = 2.0
 )
 
 // crossing reports places where two neurites seem glued in an X: arms on either side of a weak place go straight on. Dendrites
@@ -41,7 +42,7 @@ var crossing = Detector{
 			if !ok || !pairing.within(len(mine)) {
 				continue
 			}
-			p := 1 - (1-crossingPrior)*(1-w.probability())
+			p := w.given(crossingRatio)
 			out = append(out, c.finding(c.pairKey(w.below, w.above), c.between(w.below, w.above), p, c.moved(w), c.propose(w),
 				fmt.Sprintf("two neurites seem to cross here: arms go straight on at %.0f° and %.0f°", pairing.first, pairing.second),
 				Evidence{"angle of one pair of arms", pairing.first, "°"},
@@ -75,7 +76,7 @@ var turningBack = Detector{
 			if !ok1 || !ok2 || turn < turning {
 				continue
 			}
-			p := 1 - (1-turningPrior)*(1-w.probability())
+			p := w.given(turningRatio)
 			out = append(out, c.finding(c.pairKey(w.below, w.above), c.between(w.below, w.above), p, c.moved(w), c.propose(w),
 				fmt.Sprintf("a branch turns back by %.0f°", turn),
 				Evidence{"deflection", turn, "°"},
@@ -101,7 +102,7 @@ var thickDaughter = Detector{
 			if !ok1 || !ok2 || daughter < thicker*parent {
 				continue
 			}
-			p := 1 - (1-thickPrior)*(1-w.probability())
+			p := w.given(thickRatio)
 			out = append(out, c.finding(c.pairKey(w.below, w.above), c.between(w.below, w.above), p, c.moved(w), c.propose(w),
 				fmt.Sprintf("a branch %.1f times as thick as what it leaves", daughter/parent),
 				Evidence{"radius of the branch", daughter, "nm"},

@@ -10,9 +10,9 @@ const (
 	polaritySynapses = 5    // on each side, at least
 	polarityMixing   = 0.3  // segregation index that a cut must reach, at least
 	polarityChance   = 1e-3 // Fisher's exact p, at most
-	// polarityPrior is how often such a weak place parts an axon from somebody else's dendrite, beyond what the contacts say. Our
-	// own: a segregated arbor is also simply a neuron, which is why strong places are never reported.
-	polarityPrior = 0.08
+	// polarityRatio is how many times likelier such a parting of roles is at a false merge than at a sound weak place. Our own
+	// estimate: a segregated arbor is also simply a neuron.
+	polarityRatio = 4.0
 )
 
 // polarityConflict reports weak places that part inputs from outputs: an axon glued to a dendrite. The split of roles is
@@ -36,7 +36,7 @@ var polarityConflict = Detector{
 			if !ok || h < polarityMixing || chance > polarityChance {
 				continue
 			}
-			p := 1 - (1-polarityPrior)*(1-w.probability())
+			p := w.given(polarityRatio)
 			flow := newFlow(int64(w.in[0]), int64(w.out[0]), int64(w.in[0]+w.in[1]), int64(w.out[0]+w.out[1]))
 			out = append(out, c.finding(c.pairKey(w.below, w.above), c.between(w.below, w.above), p, c.moved(w), c.propose(w),
 				fmt.Sprintf("a part with %d inputs and %d outputs hangs on one with %d and %d", w.in[0], w.out[0], w.in[1], w.out[1]),

@@ -7,8 +7,12 @@ import (
 	"fettle.example/fettle/internal/stats"
 )
 
-// sizePrior is how often a segment of outlying size is a false merge: our own, to be learned from outcomes.
-const sizePrior = 0.1
+const (
+	// sizeRatio is how many times likelier a weak place is a false merge in a segment of outlying size; sizePrior is how often such a
+	// segment is one when it has no weak place. Both our own, to be learned from outcomes.
+	sizeRatio = 3.0
+	sizePrior = 0.05
+)
 
 // sizeOutlier reports segments far larger than the volume's others, on a logarithmic scale (Iglewicz & Hoaglin 1993; sizes
 // are log-normal), and points at the weak place that would divide them best.
@@ -38,11 +42,11 @@ var sizeOutlier = Detector{
 		}
 		if place == nil {
 			root := c.tree().root
-			return []Finding{c.finding(fmt.Sprintf("size-%d", c.IDs[root]), c.Points[root], sizePrior/3, c.worth(len(c.Synapses)/2, c.tree().cable/2), nil,
+			return []Finding{c.finding(fmt.Sprintf("size-%d", c.IDs[root]), c.Points[root], sizePrior, c.worth(len(c.Synapses)/2, c.tree().cable/2), nil,
 				said+"; no weak place in it", evidence...)}
 		}
 		evidence = append(evidence, Evidence{"what the contacts at its weakest place say for one cell", place.belief, "nat"})
-		p := 1 - (1-sizePrior)*(1-place.probability())
+		p := place.given(sizeRatio)
 		return []Finding{c.finding(c.pairKey(place.below, place.above), c.between(place.below, place.above), p, c.moved(place), c.propose(place), said, evidence...)}
 	},
 }

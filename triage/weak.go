@@ -38,7 +38,12 @@ const (
 
 // probability that the two sides are two cells, from what the contacts between them say. Two neurites that touch in passing
 // have many contacts, and all but one or two of them speak against one cell; a thin neck has one, which speaks for it.
-func (w *weakPlace) probability() float64 { return 1 / (1 + math.Exp(weakPrior+w.belief/temper)) }
+func (w *weakPlace) probability() float64 { return w.given(1) }
+
+// given is the probability in the light of further evidence, which is so many times likelier at a false merge than elsewhere.
+func (w *weakPlace) given(ratio float64) float64 {
+	return 1 / (1 + math.Exp(weakPrior+w.belief/temper)/ratio)
+}
 
 // belief is what one contact says.
 func belief(c base.Contact) float64 {

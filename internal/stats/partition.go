@@ -28,29 +28,31 @@ func Agree[T, S comparable](rows []Overlap[T, S]) (a Agreement, ok bool) {
 		t T
 		s S
 	}
-	cells, truth, segments := make(map[cell]float64), make(map[T]float64), make(map[S]float64)
+	var cells tally[cell]
+	var truth tally[T]
+	var segments tally[S]
 	var n float64
 	for _, r := range rows {
-		cells[cell{r.True, r.Segment}] += r.Weight
-		truth[r.True] += r.Weight
-		segments[r.Segment] += r.Weight
+		cells.add(cell{r.True, r.Segment}, r.Weight)
+		truth.add(r.True, r.Weight)
+		segments.add(r.Segment, r.Weight)
 		n += r.Weight
 	}
 	if n <= 0 {
 		return a, false
 	}
 	var both, inTruth, inSegments float64
-	for c, w := range cells {
-		if w > 0 {
-			a.Split -= w / n * math.Log2(w/truth[c.t])
-			a.Merge -= w / n * math.Log2(w/segments[c.s])
+	for i, w := range cells.weights {
+		if c := cells.keys[i]; w > 0 {
+			a.Split -= w / n * math.Log2(w/truth.of(c.t))
+			a.Merge -= w / n * math.Log2(w/segments.of(c.s))
 			both += w * w
 		}
 	}
-	for _, w := range truth {
+	for _, w := range truth.weights {
 		inTruth += w * w
 	}
-	for _, w := range segments {
+	for _, w := range segments.weights {
 		inSegments += w * w
 	}
 	a.Split, a.Merge = max(0, a.Split), max(0, a.Merge)
@@ -70,3 +72,25 @@ func adjusted(both, inTruth, inSegments, n float64) float64 {
 	}
 	return (pairs(both) - chance) / (most - chance)
 }
+
+// tally adds weights up by key, and keeps the order in which keys came: sums over it are the same each time, to the last bit.
+type tally[K comparable] struct {
+	at      map[K]int
+	keys    []K
+	weights []float64
+}
+
+func (t *tally[K]) add(k K, w float64) {
+	i, ok := t.at[k]
+	if !ok {
+		if t.at == nil {
+			t.at = make(map[K]int)
+		}
+		i = len(t.keys)
+		t.at[k] = i
+		t.keys, t.weights = append(t.keys, k), append(t.weights, 0)
+	}
+	t.weights[i] += w
+}
+
+func (t *tally[K]) of(k K) float64 { return t.weights[t.at[k]] }
