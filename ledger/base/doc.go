@@ -21,7 +21,7 @@
 // Delivery: table.go (what the tables are), cell.go (what a value may be), csv.go and parquet.go (how they are read), ahead.go
 // (in a goroutine of its own), describe.go (volume.json), problem.go (what was wrong). Import: import.go (reading and
 // checking), supervoxels.go, contacts.go, synapses.go, extsort.go, arrange.go, layout.go and connect.go (ordinals), store.go,
-// digest.go. Blocks: planes.go, geometry.go, touch.go, segments.go. Reading: base.go, index.go, cache.go, view.go,
+// digest.go. Blocks: pack.go, planes.go, geometry.go, touch.go, segments.go. Reading: base.go, index.go, cache.go, view.go,
 // totals.go, nearest.go.
 //
 // # What it leaves to others
