@@ -202,9 +202,9 @@ func (a *app) printThroughput(days []fettle.PersonDay) error {
 		n("released", func(d fettle.PersonDay) int { return d.Released }),
 		n("expired", func(d fettle.PersonDay) int { return d.Expired }),
 		right("active hours", func(d fettle.PersonDay) string { return fixed(d.ActiveHours, 2) }),
-		right("an hour", func(d fettle.PersonDay) string { return measured(d.TasksPerActiveHour, 1) }),
-		right("min merge", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-merge") }),
-		right("min split", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-split") }),
+		right("tasks an hour", func(d fettle.PersonDay) string { return measured(d.TasksPerActiveHour, 1) }),
+		right("minutes false merge", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-merge") }),
+		right("minutes false split", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-split") }),
 		n("reviewed", func(d fettle.PersonDay) int { return d.Reviewed }),
 		right("accepted", func(d fettle.PersonDay) string { return share(d.AcceptedShare) }))
 }
