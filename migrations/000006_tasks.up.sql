@@ -224,15 +224,14 @@ begin
 end $$;
 create trigger task_starts before insert on task for each row when (new.state <> 'open') execute function task_starts();
 
--- The queue lock of a volume, until the transaction ends. 1952543595 spells "task".
-create function task_lock(volume int, alone boolean) returns void language plpgsql as $$
-begin
-    if alone then
-        perform pg_advisory_xact_lock(1952543595, volume);
-    else
-        perform pg_advisory_xact_lock_shared(1952543595, volume);
-    end if;
-end $$;
+-- The queue lock of a volume, until the transaction ends. 1952543595 spells "task". (SQL functions, which vanish into
+-- the query that calls them.)
+create function task_lock(volume int) returns void language sql as $$
+    select pg_advisory_xact_lock_shared(1952543595, volume)
+$$;
+create function task_lock_alone(volume int) returns void language sql as $$
+    select pg_advisory_xact_lock(1952543595, volume)
+$$;
 
 -- Claims the task wanted, or the best that this person may have, and returns it with the claim; nulls when there is
 -- none. One assigned to them goes before all others.
@@ -251,7 +250,11 @@ begin
     end if;
     alone := wanted is not null
           or exists (select from task x where x.volume_id = volume and x.assigned_to = who and x.state = 'open');
-    perform task_lock(volume, alone);
+    if alone then
+        perform task_lock_alone(volume);
+    else
+        perform task_lock(volume);
+    end if;
     if wanted is not null then
         select * into t from task x where x.volume_id = volume and x.number = wanted for update;
         perform task_claimable(t, who);
@@ -340,9 +343,9 @@ create function task_head(volume int, segment bigint) returns table (number bigi
      order by l.priority desc, l.number limit 1
 $$;
 
--- Refuses who has no such claim (who is null for the program itself), and takes the queue lock shared. Whether the
--- claim is still live is for claim_is_live to say, when the caller updates it.
-create function claim_enter(id uuid, who text) returns void language plpgsql as $$
+-- Refuses who has no such claim (who is null for the program itself), takes the queue lock, and returns the volume.
+-- Whether the claim is still live is for claim_is_live to say, when the caller updates it.
+create function claim_enter(id uuid, who text) returns int language plpgsql as $$
 declare
     c record;
 begin
@@ -352,7 +355,8 @@ begin
     elsif c.person <> who then
         perform refuse('claim_own', 'the claim is somebody else''s');
     end if;
-    perform task_lock(c.volume_id, false);
+    perform task_lock(c.volume_id);
+    return c.volume_id;
 end $$;
 
 -- Gives up the leases of a claim's task, and lets those step forward who stand first now. A task that comes back
@@ -427,19 +431,21 @@ end $$;
 -- correction and the segments it changes.
 create function claim_resolve(id uuid, who text, how text, why text, of_entry bigint, changed bigint[], out t task, out c claim)
 language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off set enable_bitmapscan = off as $$
+declare
+    volume int := claim_enter(id, who);
+    waits  int;
 begin
-    perform claim_enter(id, who);
     update claim set ended = 'resolved', ended_at = now(), outcome = how, note = why, position = of_entry
      where claim_id = id returning * into c;
-    update task x set state = 'resolved' where x.volume_id = c.volume_id and x.number = c.number returning * into t;
+    update task x set state = 'resolved' where x.volume_id = volume and x.number = c.number returning * into t;
     if of_entry is not null then
         if not changed && t.segments then
             perform refuse('claim_corrects', 'the correction changes none of the task''s segments');
         end if;
-        perform segments_unheld(c.volume_id, who, changed);
+        perform segments_unheld(volume, who, changed);
     end if;
-    perform lease_end(id, t, null);
-    insert into task_event (volume_id, number, person, what, note) values (c.volume_id, c.number, who, 'resolved', how);
+    waits := lease_end(id, t, null);
+    insert into task_event (volume_id, number, person, what, note) values (volume, c.number, who, 'resolved', how);
 end $$;
 
 -- Stores what a second person said. reversal is the position of the entry that undid a returned correction, and

@@ -28,7 +28,7 @@ const (
 // ours: one UPDATE with SKIP LOCKED to claim, one to complete, no segments, no people, no history.
 //
 //   - uniform: segments drawn from 40,000 alike;
-//   - skewed: 40,000·u³, so that the commonest is on about 6 % of the tasks;
+//   - skewed: 40,000·u³, so that the commonest is on about 3 % of the tasks;
 //   - hot: the 50,000 best tasks all touch one of 30 segments, fewer than there are claimers.
 func BenchmarkClaim(b *testing.B) {
 	const segments = 40_000

@@ -69,7 +69,7 @@ func again(fn func() error) error {
 
 // lockAlone takes a volume's queue lock for work that moves many tasks. It ends with the transaction.
 func lockAlone(ctx context.Context, tx pgx.Tx, volume int32) error {
-	_, err := tx.Exec(ctx, `select task_lock($1, true)`, volume)
+	_, err := tx.Exec(ctx, `select task_lock_alone($1)`, volume)
 	return err
 }
 
