@@ -105,10 +105,30 @@ func (b *Base) View(ctx context.Context, db pg.DB, ranges []Range) (*View, error
 	for i := range v.Outside {
 		v.Outside[i].OtherID = ID(b.ids[v.Outside[i].Other])
 	}
-	if err := b.viewSynapses(ctx, db, c, v); err != nil {
-		return nil, err
+	// Most segments are fragments that hold neither, and their table says so: no need to ask the database.
+	if b.some(ranges, func(s *segmentRecord) bool { return s.in > 0 || s.out > 0 }) {
+		if err := b.viewSynapses(ctx, db, c, v); err != nil {
+			return nil, err
+		}
 	}
-	return v, b.viewNuclei(ctx, db, c, v)
+	if b.some(ranges, func(s *segmentRecord) bool { return s.nuclei > 0 }) {
+		if err := b.viewNuclei(ctx, db, c, v); err != nil {
+			return nil, err
+		}
+	}
+	return v, nil
+}
+
+// some says whether a base segment that the ranges touch is so. O(ranges + base segments touched).
+func (b *Base) some(ranges []Range, is func(*segmentRecord) bool) bool {
+	for _, r := range ranges {
+		for n := b.SegmentNumber(r.Lo); n < len(b.segments) && b.segments[n].lo < r.Hi; n++ {
+			if is(&b.segments[n]) {
+				return true
+			}
+		}
+	}
+	return false
 }
 
 func (v *View) takeGeometry(c *chosen, blk *block) {
