@@ -87,7 +87,8 @@ func followBatch(ctx context.Context, v *ledger.Volume, from int64, entries []le
 }
 
 // carry takes along suspected false splits that were judged from a segment which has not changed: only the name of the other
-// has. The finding stands as long as its two supervoxels are in different segments.
+// has. The finding stands as long as its two supervoxels are in different segments. Where both have a nucleus now, the segment
+// is judged again.
 func (j *judge) carry(ctx context.Context, retired []ledger.ID, judged map[ledger.ID]bool) ([]Finding, error) {
 	rows, err := j.volume.Pool().Query(ctx, findingColumns+`
 		 where volume_id = $1 and retired is null and kind = $2 and segments && $3`, j.volume.ID(), FalseSplit, retired)
@@ -109,7 +110,17 @@ func (j *judge) carry(ctx context.Context, retired []ledger.ID, judged map[ledge
 	var out []Finding
 	for i, f := range old {
 		a, b := j.byID[now[2*i]], j.byID[now[2*i+1]]
-		if a.ID == b.ID || judged[smaller(a, b).ID] {
+		at := smaller(a, b).ID
+		if a.ID == b.ID || judged[at] {
+			continue
+		}
+		if a.Nuclei > 0 && b.Nuclei > 0 { // which may be news, and says that they are two cells
+			judged[at] = true
+			found, err := j.look(ctx, at)
+			if err != nil {
+				return nil, err
+			}
+			out = append(out, found...)
 			continue
 		}
 		f.Segments = []ledger.ID{a.ID, b.ID}
