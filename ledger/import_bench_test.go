@@ -83,11 +83,11 @@ func inventRows(n int) *inventedRows {
 	}
 	touching := make(map[[2]int]bool)
 	touch := func(a, b int, affinity float64) {
-		if pair := [2]int{min(a, b), max(a, b)}; touching[pair] {
+		pair := [2]int{min(a, b), max(a, b)}
+		if touching[pair] {
 			return
-		} else {
-			touching[pair] = true
 		}
+		touching[pair] = true
 		d.contacts = append(d.contacts, []any{d.supervoxels[a][0], d.supervoxels[b][0], math.Round(affinity*1e4) / 1e4, math.Round(2e4 + 1e6*rng.Float64()*rng.Float64())})
 	}
 	for len(d.supervoxels) < n {

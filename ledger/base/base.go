@@ -101,8 +101,10 @@ func (b *Base) readSegments(ctx context.Context, db pg.DB) error {
 		if err != nil {
 			return err
 		}
+		for i := range segs {
+			lo += segs[i].size
+		}
 		b.segments = append(b.segments, segs...)
-		lo += uint32(sumSizes(segs))
 		return nil
 	})
 	ids := make([]uint64, len(b.segments))
@@ -111,14 +113,10 @@ func (b *Base) readSegments(ctx context.Context, db pg.DB) error {
 		ids[i], b.starts[i] = b.segments[i].id, b.segments[i].lo
 	}
 	b.byID = newIDIndex(ids)
-	return err
-}
-
-func sumSizes(segs []segmentRecord) (n int) {
-	for i := range segs {
-		n += int(segs[i].size)
+	if err == nil && int64(lo) != b.info.Supervoxels {
+		err = fmt.Errorf("volume %s, section %s: %w", b.info.Name, sectionSegments, errDamaged)
 	}
-	return n
+	return err
 }
 
 // eachBlock reads a section whole, block by block.

@@ -161,5 +161,8 @@ func (b *Base) decode(k blockKey, data []byte) (value any, bytes int, err error)
 	if err != nil {
 		return nil, 0, err
 	}
+	if len(t.other) > 0 && int64(slices.Max(t.other)) >= b.info.Supervoxels {
+		return nil, 0, errDamaged
+	}
 	return t, 4*len(t.start) + 4*len(t.other) + len(t.affinity) + len(t.area), nil
 }
