@@ -1,33 +1,18 @@
 package tasks
 
 import (
-	"cmp"
 	"context"
+	"encoding/json"
+	"fmt"
 	"slices"
+	"strconv"
 	"strings"
 
-	"github.com/google/uuid"
 	"github.com/jackc/pgx/v5"
 
 	"fettle.example/fettle/ledger"
 	"fettle.example/fettle/triage"
 )
-
-// live is an open or claimed task that the news concern.
-type live struct {
-	number   int64
-	keys     []string // of the findings it was made of, its place's own first
-	segments []ledger.ID
-	priority float64
-	lined    bool // open, and in the lines
-	claim    *uuid.UUID
-}
-
-// moved is a live task and the place that it is about from now on.
-type moved struct {
-	live
-	place triage.Place
-}
 
 // applyNews brings the tasks in line with what triage finds now. The caller has the queue lock alone.
 func applyNews(ctx context.Context, tx pgx.Tx, volume int32, n news) (made int, err error) {
@@ -60,54 +45,6 @@ func applyNews(ctx context.Context, tx pgx.Tx, volume int32, n news) (made int, 
 		insert into follower (volume_id, name, position) values ($1, $2, $3)
 		on conflict (volume_id, name) do update set position = excluded.position`, volume, follower, n.to)
 	return len(numbers), err
-}
-
-// match finds the task of each place, the best place first: one in somebody's hands before others, then one that has
-// the place's own key, then the oldest. What remains are tasks whose place is gone, and places without a task. A task
-// that has nothing to change is in neither.
-func match(found []live, places []triage.Place) (moving []moved, gone []live, rest []triage.Place) {
-	byKey := make(map[string][]int)
-	for i, t := range found {
-		for _, key := range t.keys {
-			byKey[key] = append(byKey[key], i)
-		}
-	}
-	taken := make([]bool, len(found))
-	for _, p := range places {
-		best := -1
-		for _, key := range keysOf(p) {
-			for _, i := range byKey[key] {
-				if !taken[i] && (best < 0 || closer(found[i], found[best], p)) {
-					best = i
-				}
-			}
-		}
-		if best < 0 {
-			rest = append(rest, p)
-			continue
-		}
-		taken[best] = true
-		if t := found[best]; p.Priority != t.priority || p.Key != t.keys[0] || !slices.Equal(p.Segments, t.segments) {
-			moving = append(moving, moved{t, p})
-		}
-	}
-	for i, t := range found {
-		if !taken[i] {
-			gone = append(gone, t)
-		}
-	}
-	slices.SortFunc(moving, func(a, b moved) int { return cmp.Compare(a.number, b.number) })
-	return moving, gone, rest
-}
-
-func closer(a, b live, p triage.Place) bool {
-	switch {
-	case (a.claim != nil) != (b.claim != nil):
-		return a.claim != nil
-	case (a.keys[0] == p.Key) != (b.keys[0] == p.Key):
-		return a.keys[0] == p.Key
-	}
-	return a.number < b.number
 }
 
 // why names the entries that retired a task's segments, for its history.
@@ -190,27 +127,10 @@ func overtake(ctx context.Context, tx pgx.Tx, volume int32, n news, gone []live)
 // lines. A claim goes along; only if somebody else's claim has come to the same segment, as after a merge of two that
 // were in different hands, it ends.
 func move(ctx context.Context, tx pgx.Tx, volume int32, n news, moving []moved) (joining []int64, err error) {
-	numbers, places := make([]int64, len(moving)), make([]triage.Place, len(moving))
-	for i, t := range moving {
-		p := t.place
-		numbers[i], places[i] = t.number, p
-		findings, proposal, err := evidence(p)
-		if err != nil {
-			return nil, err
-		}
-		var b pgx.Batch
-		b.Queue(`update task set segments = $3::bigint[], priority = $4::float8, kind = $5::text, family = $6 where volume_id = $1 and number = $2`,
-			volume, t.number, p.Segments, p.Priority, p.Kind, p.Family)
-		b.Queue(`
-			update task_place set probability = $3, gain = $4, minutes = $5, point_nm = $6, said = $7, findings = $8, proposal = $9, place = $10
-			 where volume_id = $1 and number = $2`,
-			volume, t.number, p.Probability, p.Gain, p.Minutes, p.Point, p.Said, findings, proposal, p.Key)
-		if !slices.Equal(p.Segments, t.segments) {
-			b.Queue(`insert into task_event (volume_id, number, what, note) values ($1, $2, 'moved', $3)`, volume, t.number, n.why(t.live))
-		}
-		if err := tx.SendBatch(ctx, &b).Close(); err != nil {
-			return nil, err
-		}
+	if err := rewrite(ctx, tx, volume, n, moving); err != nil {
+		return nil, err
+	}
+	for _, t := range moving {
 		joins := t.lined
 		if t.claim != nil {
 			if err := tx.QueryRow(ctx, `select claim_move($1, $2)`, volume, t.number).Scan(&joins); err != nil {
@@ -221,7 +141,61 @@ func move(ctx context.Context, tx pgx.Tx, volume int32, n news, moving []moved) 
 			joining = append(joining, t.number)
 		}
 	}
-	return joining, nameKeys(ctx, tx, volume, numbers, places)
+	return joining, nil
+}
+
+// rewrite stores what triage says of places now. There may be tens of thousands, when one giant false merge was cut.
+func rewrite(ctx context.Context, tx pgx.Tx, volume int32, n news, moving []moved) error {
+	k := len(moving)
+	numbers, places, why := make([]int64, k), make([]triage.Place, k), make([]*string, k)
+	segments, kind, family, key, said := make([]string, k), make([]string, k), make([]string, k), make([]string, k), make([]string, k)
+	priority, probability, gain, minutes := make([]float64, k), make([]float64, k), make([]float64, k), make([]float64, k)
+	findings, proposal, point := make([][]byte, k), make([]*json.RawMessage, k), make([]string, k)
+	for i, t := range moving {
+		p := t.place
+		var err error
+		if findings[i], proposal[i], err = evidence(p); err != nil {
+			return err
+		}
+		numbers[i], places[i], segments[i], kind[i], family[i], key[i], said[i] = t.number, p, literal(p.Segments), p.Kind, p.Family, p.Key, p.Said
+		priority[i], probability[i], gain[i], minutes[i] = p.Priority, p.Probability, p.Gain, p.Minutes
+		point[i] = fmt.Sprintf("{%g,%g,%g}", p.Point[0], p.Point[1], p.Point[2])
+		if !slices.Equal(p.Segments, t.segments) {
+			by := n.why(t.live)
+			why[i] = &by
+		}
+	}
+	var b pgx.Batch
+	b.Queue(`
+		update task set segments = u.segments::bigint[], priority = u.priority, kind = u.kind, family = u.family
+		  from unnest($2::bigint[], $3::text[], $4::float8[], $5::text[], $6::text[]) u (number, segments, priority, kind, family)
+		 where volume_id = $1 and task.number = u.number`, volume, numbers, segments, priority, kind, family)
+	b.Queue(`
+		update task_place set place = u.key, probability = u.probability, gain = u.gain, minutes = u.minutes, point_nm = u.point::float8[],
+		       said = u.said, findings = u.findings, proposal = u.proposal
+		  from unnest($2::bigint[], $3::text[], $4::float8[], $5::float8[], $6::float8[], $7::text[], $8::text[], $9::jsonb[], $10::jsonb[])
+		       u (number, key, probability, gain, minutes, point, said, findings, proposal)
+		 where volume_id = $1 and task_place.number = u.number`,
+		volume, numbers, key, probability, gain, minutes, point, said, findings, proposal)
+	b.Queue(`
+		insert into task_event (volume_id, number, what, note)
+		select $1, n, 'moved', why from unnest($2::bigint[], $3::text[]) u (n, why) where why is not null`, volume, numbers, why)
+	if err := tx.SendBatch(ctx, &b).Close(); err != nil {
+		return err
+	}
+	return nameKeys(ctx, tx, volume, numbers, places)
+}
+
+// literal writes ids as a PostgreSQL array: arrays of unlike lengths can't travel as one array of arrays.
+func literal(ids []ledger.ID) string {
+	out := []byte{'{'}
+	for i, id := range ids {
+		if i > 0 {
+			out = append(out, ',')
+		}
+		out = strconv.AppendInt(out, int64(id), 10)
+	}
+	return string(append(out, '}'))
 }
 
 // unsettled leaves away the places that somebody found sound or unclear, and was not returned: those whose weightiest

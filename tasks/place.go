@@ -3,6 +3,7 @@ package tasks
 import (
 	"context"
 	"encoding/json"
+	"maps"
 	"slices"
 
 	"github.com/google/uuid"
@@ -79,9 +80,10 @@ func nameKeys(ctx context.Context, tx pgx.Tx, volume int32, numbers []int64, pla
 			owner[key] = numbers[i]
 		}
 	}
-	keys, owners := make([]string, 0, len(owner)), make([]int64, 0, len(owner))
-	for key, number := range owner {
-		keys, owners = append(keys, key), append(owners, number)
+	keys := slices.Sorted(maps.Keys(owner)) // in the order of the index
+	owners := make([]int64, len(keys))
+	for i, key := range keys {
+		owners[i] = owner[key]
 	}
 	_, err := tx.Exec(ctx, `
 		insert into task_key (volume_id, key, number) select $1, * from unnest($2::text[], $3::bigint[])
