@@ -65,8 +65,6 @@ type edgeSet struct {
 	contacts, links [][2]uint32
 }
 
-func (e edgeSet) len() int { return len(e.contacts) + len(e.links) }
-
 func newState(b *base.Base) *state {
 	return &state{
 		base:     b,

@@ -134,6 +134,9 @@ func TestWideCutsAgainstEdmondsKarpAndShuffled(t *testing.T) {
 		got := ask(t, q)
 		plain := newPlainNetwork(q.n, q.edges, q.first, q.second)
 		flow := plain.edmondsKarp()
+		if other := newPlainNetwork(q.n, q.edges, q.first, q.second).dinic(); other != flow {
+			t.Fatalf("the two references disagree: %d and %d", flow, other)
+		}
 		s, sink := plain.leastSides()
 		if diff := cmp.Diff(canonical(q.n, q.edges, flow, s, sink), got); diff != "" {
 			t.Fatalf("trial %d (-want +got):\n%s", trial, diff)

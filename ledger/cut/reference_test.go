@@ -130,7 +130,7 @@ func (p *plainNetwork) edmondsKarp() (flow int64) {
 	}
 }
 
-// dinic is the plain method that the benchmarks compare with (Dinic 1970):
+// dinic is a second plain method (Dinic 1970), against which the first is held:
 // levels from the source, then a blocking flow by an iterative search.
 func (p *plainNetwork) dinic() (flow int64) {
 	level, next := make([]int32, p.n+2), make([]int, p.n+2)
