@@ -44,6 +44,9 @@ func run(ctx context.Context, args []string, in io.Reader, out, errs io.Writer) 
 	if err == nil {
 		return exitOK
 	}
+	if o.log == nil && fault.KindOf(err) == fault.Internal {
+		err = fault.New(fault.Invalid, "usage", err.Error()).WithNext("see fettled help") // cobra's own refusal
+	}
 	o.complain(err)
 	if fault.KindOf(err) == fault.Invalid && fault.CodeOf(err) != "delivery-refused" {
 		return exitUsage
@@ -84,6 +87,19 @@ Without a database address a private PostgreSQL is started from this machine's o
 		o.use(cmd, "data", "verbose")
 	}
 	return root
+}
+
+// noun makes a command that only holds others, and refuses a word that is none of them.
+func noun(name, short string, commands ...*cobra.Command) *cobra.Command {
+	cmd := &cobra.Command{Use: name, Short: short, RunE: func(cmd *cobra.Command, args []string) error {
+		if len(args) > 0 {
+			return fault.Newf(fault.Invalid, "usage", "there is no command %q", cmd.CommandPath()+" "+args[0]).
+				WithNext("see " + cmd.CommandPath() + " --help")
+		}
+		return cmd.Help()
+	}}
+	cmd.AddCommand(commands...)
+	return cmd
 }
 
 // use gives a command settings of these names.

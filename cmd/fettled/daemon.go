@@ -13,6 +13,7 @@ import (
 	"github.com/jackc/pgx/v5/pgxpool"
 
 	"fettle.example/fettle/api"
+	"fettle.example/fettle/internal/fault"
 	"fettle.example/fettle/internal/pg"
 	"fettle.example/fettle/internal/pgserver"
 	"fettle.example/fettle/ledger"
@@ -56,15 +57,17 @@ func Open(ctx context.Context, c Config, log *slog.Logger) (*Daemon, error) {
 }
 
 // database is the address to use: the one that was given, else that of the private PostgreSQL, which is started unless
-// another process of this machine has it running.
+// another process has it running.
 func (d *Daemon) database(ctx context.Context) (string, error) {
 	if d.Config.Database != "" {
 		return d.Config.Database, nil
 	}
-	if address, ok := running(ctx, d.Config.Data); ok {
-		return address, nil
-	}
 	server, err := pgserver.Start(ctx, pgserver.Config{Dir: d.Config.Data, FetchPostgres: d.Config.FetchPostgres, Log: io.Discard})
+	if fault.CodeOf(err) == "postgres-in-use" {
+		if address, ok := running(ctx, d.Config.Data); ok {
+			return address, nil
+		}
+	}
 	if err != nil {
 		return "", err
 	}

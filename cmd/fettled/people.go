@@ -9,7 +9,6 @@ import (
 )
 
 func (o *operator) personCommand() *cobra.Command {
-	cmd := &cobra.Command{Use: "person", Short: "The people who work here"}
 	var roles []string
 	add := &cobra.Command{
 		Use:   "add HANDLE",
@@ -31,13 +30,12 @@ func (o *operator) personCommand() *cobra.Command {
 		},
 	}
 	add.Flags().StringSliceVar(&roles, "role", nil, "`ROLE` of proofreader, reviewer, lead, agent; several with commas; none may read")
-	cmd.AddCommand(add)
+	cmd := noun("person", "The people who work here", add)
 	o.use(cmd, "database", "fetch-postgres")
 	return cmd
 }
 
 func (o *operator) tokenCommand() *cobra.Command {
-	cmd := &cobra.Command{Use: "token", Short: "The tokens that people sign in with"}
 	var note string
 	issue := &cobra.Command{
 		Use:   "new HANDLE",
@@ -55,7 +53,7 @@ func (o *operator) tokenCommand() *cobra.Command {
 		},
 	}
 	issue.Flags().StringVar(&note, "note", "made with fettled", "what it is for")
-	cmd.AddCommand(issue)
+	cmd := noun("token", "The tokens that people sign in with", issue)
 	o.use(cmd, "database", "fetch-postgres")
 	return cmd
 }

@@ -22,13 +22,9 @@ func (m *member) judge(ctx context.Context, task fettle.Task, mind *synth.Oracle
 	if err != nil {
 		return synth.Verdict{}, err
 	}
-	var groups [][]uint64
+	groups := m.twoLargest(members)
 	if p != nil && p.Groups != nil {
-		for _, g := range *p.Groups {
-			groups = append(groups, numbers(g))
-		}
-	} else {
-		groups = m.twoLargest(members)
+		groups = groupsOf(*p.Groups)
 	}
 	if len(groups) < 2 {
 		return synth.Verdict{Outcome: synth.Sound}, nil
@@ -91,6 +87,14 @@ func numbers(ids []string) []uint64 {
 	out := make([]uint64, len(ids))
 	for i, id := range ids {
 		out[i] = number(id)
+	}
+	return out
+}
+
+func groupsOf(groups []fettle.IDs) [][]uint64 {
+	out := make([][]uint64, len(groups))
+	for i, g := range groups {
+		out[i] = numbers(g)
 	}
 	return out
 }

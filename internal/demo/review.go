@@ -52,15 +52,22 @@ func (m *member) decide(ctx context.Context, task fettle.Task) error {
 	return err
 }
 
-// right says whether a careful look agrees with an outcome. A correction is judged by what it joined or parted, since
-// the segments are not what they were.
+// right says whether a careful look agrees with an outcome. A correction is judged by what it joined or parted, and
+// what was left alone by what was proposed: the segments may not be what they were.
 func (m *member) right(ctx context.Context, task fettle.Task) (bool, error) {
-	r := task.Resolution
-	if r.Position == nil {
-		v, err := m.judge(ctx, task, m.second)
-		return v.Outcome == string(r.Outcome), err
+	r, p := task.Resolution, task.Proposal
+	switch {
+	case r.Position != nil:
+		return m.rightEntry(ctx, *r.Position)
+	case p != nil && p.Groups != nil:
+		return m.second.Split(groupsOf(*p.Groups), nil).Outcome == string(r.Outcome), nil
 	}
-	e, err := fettle.Read[fettle.Entry](m.api.GetEntry(ctx, m.Volume, *r.Position))
+	v, err := m.judge(ctx, task, m.second)
+	return v.Outcome == string(r.Outcome), err
+}
+
+func (m *member) rightEntry(ctx context.Context, position int64) (bool, error) {
+	e, err := fettle.Read[fettle.Entry](m.api.GetEntry(ctx, m.Volume, position))
 	if err != nil {
 		return false, err
 	}
@@ -68,9 +75,5 @@ func (m *member) right(ctx context.Context, task fettle.Task) (bool, error) {
 		pair := e.Joined.Links[0]
 		return m.second.Merge(number(pair[0]), number(pair[1])).Outcome == synth.Corrected, nil
 	}
-	var groups [][]uint64
-	for _, g := range *e.Seeds {
-		groups = append(groups, numbers(g))
-	}
-	return m.second.Split(groups, nil).Outcome == synth.Corrected, nil
+	return m.second.Split(groupsOf(*e.Seeds), nil).Outcome == synth.Corrected, nil
 }
