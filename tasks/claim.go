@@ -20,7 +20,20 @@ type ClaimOptions struct {
 	ID       uuid.UUID // the claim's own id, made by the caller, version 7: the same id again gets the same answer
 }
 
-// claimSQL is the hot statement: one call finds a task, leases its segments and claims it. See task_claim.
+// claimSQL is the hot statement: one call finds a task, leases its segments and claims it. What it spends its time on is
+// the search in task_claim, which looks at heads alone and so does not depend on how many wait behind them. With
+// 100,000 tasks and 100,000 changed segments (PostgreSQL 15; the buffers are those of 3,200 claims since a vacuum):
+//
+//	Limit (actual time=0.024..0.025 rows=1 loops=1)
+//	  Buffers: shared hit=23
+//	  ->  LockRows
+//	        ->  Nested Loop Anti Join
+//	              ->  Index Scan using task_ready on task x (actual time=0.016..0.016 rows=1 loops=1)
+//	                    Index Cond: (volume_id = $1)
+//	                    Buffers: shared hit=19
+//	              ->  Index Scan using segment_pkey on segment g (actual time=0.004..0.004 rows=0 loops=1)
+//	                    Index Cond: ((volume_id = $1) AND (segment_id = ANY (x.segments)))
+//	                    Filter: (retired IS NOT NULL)
 const claimSQL = wholeTask + ` from task_claim($1, $2, nullif($3, 0), $4, $5, $6, $7) f` + ofFunction
 
 // Claim takes the best task that this person may have, those assigned to them first, or the one named. Nothing left:
