@@ -31,7 +31,7 @@ create table task (
     assigned_to text          references person (handle),
     claim_id    uuid,
     primary key (volume_id, number)
-) with (fillfactor = 70);
+) with (fillfactor = 70, autovacuum_vacuum_scale_factor = 0.05);
 comment on column task.segments is 'ascending as unsigned numbers, each once';
 comment on column task.waits is 'how many of its segments'' lines it is not the head of';
 comment on column task.priority is 'expected synapses put right, a minute';
@@ -200,7 +200,12 @@ begin
     when 'claimed > open', 'claimed > overtaken' then
         fits := not exists (select from claim where claim_id = old.claim_id and ended is null);
     when 'claimed > resolved' then
-        fits := new.claim_id = old.claim_id and exists (select from claim where claim_id = new.claim_id and ended = 'resolved' and outcome is not null);
+        -- With an outcome, and if that is a correction, with an entry that was posted for this task.
+        select new.claim_id = old.claim_id and c.ended = 'resolved' and c.outcome is not null
+           and (c.position is null or exists (
+                select from entry e join task_place p on p.volume_id = e.volume_id and p.task_id = e.task_id
+                 where e.volume_id = c.volume_id and e.position = c.position and p.number = new.number))
+          into fits from claim c where c.claim_id = new.claim_id;
     when 'resolved > accepted' then
         fits := new.claim_id = old.claim_id and exists (select from review where claim_id = new.claim_id and verdict = 'accept');
     when 'resolved > returned' then

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"time"
+	"unicode/utf8"
 
 	"github.com/google/uuid"
 	"github.com/jackc/pgx/v5"
@@ -199,6 +200,9 @@ func (q *Queue) Extend(ctx context.Context, p Person, claim uuid.UUID) (Claim, e
 
 // Release gives a task back. Releasing it again does nothing.
 func (q *Queue) Release(ctx context.Context, p Person, claim uuid.UUID, reason string) (Task, error) {
+	if utf8.RuneCountInString(reason) > longestNote {
+		return Task{}, noteTooLong()
+	}
 	err := again(func() error {
 		_, err := q.pool.Exec(ctx, `select claim_give_up($1, $2, 'released', $3)`, claim, p.Handle, reason)
 		return err

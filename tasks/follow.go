@@ -51,23 +51,19 @@ func (q *Queue) follow(ctx context.Context, v *ledger.Volume, all bool) (positio
 			made, err = applyNews(ctx, tx, v.ID(), n)
 			return err
 		})
-		if !errors.Is(err, errMoved) {
-			return n.to, made, q.settleIn(ctx, made, err)
+		if errors.Is(err, errMoved) {
+			continue
 		}
+		if err == nil && made >= manyMade {
+			_, err = q.pool.Exec(ctx, `analyze task, task_place, task_key, task_line`)
+		}
+		return n.to, made, err
 	}
 	return 0, 0, queueBusy()
 }
 
 // manyMade is from how many new tasks on the planner is told at once, instead of when autovacuum comes round.
 const manyMade = 1000
-
-func (q *Queue) settleIn(ctx context.Context, made int, err error) error {
-	if err != nil || made < manyMade {
-		return err
-	}
-	_, err = q.pool.Exec(ctx, `analyze task, task_place, task_line`)
-	return err
-}
 
 // readNews looks at one snapshot, before the queue lock is taken: what reads the ledger may have to wait for a group
 // that is being posted, and a resolution in that group may wait for the queue lock.

@@ -137,6 +137,16 @@ func TestAnOversleptCorrectionPostsNothing(t *testing.T) {
 	}
 }
 
+// Nor is just any entry the one that corrected a task.
+func TestTheDatabaseWantsTheEntryOfTheTask(t *testing.T) {
+	t.Parallel()
+	f := newField(t)
+	f.finds(found("bridge 17 24", 8, twins))
+	task := f.take(alder)
+	e := f.posts(birch, together())
+	f.refused("task_step", `select claim_resolve($1, 'alder', 'corrected', '', $2, $3)`, task.Claim.ID, e.Position, []ledger.ID{twins})
+}
+
 func TestNobodyCorrectsWhatAnotherIsLookingAt(t *testing.T) {
 	t.Parallel()
 	f := newField(t)
