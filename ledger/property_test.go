@@ -94,7 +94,12 @@ func (w *walk) step() {
 	d := ledger.Draft{ID: uuid.Must(uuid.NewV7()), Person: "alder", Reason: "walk"}
 	now := w.segments(w.volume, ledger.At{})
 	i, j := w.rng.IntN(len(w.ids)), w.rng.IntN(len(w.ids))
-	switch kind := w.rng.IntN(4); {
+	kind := w.rng.IntN(4)
+	if kind == 1 { // towards a split: the next one in the same segment
+		for j = (i + 1) % len(w.ids); now[j] != now[i]; j = (j + 1) % len(w.ids) {
+		}
+	}
+	switch {
 	case kind == 0 && len(w.past) > 1:
 		position := int64(1 + w.rng.IntN(len(w.past)-1))
 		d.Reversal, d.Expected = &ledger.Reversal{Position: position}, w.touched(position, now)
