@@ -109,9 +109,11 @@ func (d *day) read(v any, person string, args ...string) {
 // followed waits until findings and tasks have read every entry.
 func (d *day) followed() {
 	d.Helper()
-	ctx, cancel := context.WithTimeout(d.Context(), 20*time.Second)
+	ctx, cancel := context.WithTimeout(d.Context(), time.Minute)
 	defer cancel()
-	for ctx.Err() == nil {
+	look := time.NewTicker(100 * time.Millisecond)
+	defer look.Stop()
+	for ; ctx.Err() == nil; <-look.C {
 		var v struct {
 			Position       int64
 			Tasks_position int64
@@ -160,6 +162,7 @@ func (d *day) serve(args ...string) (address string, stop func()) {
 
 // A day, from an empty database to reconciled books, through the programs that people run.
 func TestADay(t *testing.T) {
+	t.Parallel()
 	d := &day{T: t, tokens: map[string]string{}}
 	d.fettle, d.fettled = programs(t)
 	d.env = []string{"PATH=" + os.Getenv("PATH"), "HOME=" + t.TempDir(), "FETTLE_DATABASE_URL=" + pgtest.Empty(t)}

@@ -97,8 +97,9 @@ func TestWrongUsageIsExitCodeTwo(t *testing.T) {
 
 // The demonstration runs on a database of its own, tells what happened, and goes on where it stopped.
 func TestDemonstration(t *testing.T) {
+	t.Parallel()
 	data := filepath.Join(folder(t), "demo")
-	code, out, errs := invoke(t.Context(), "demo", "--data", data, "--tasks", "4")
+	code, out, errs := invoke(t.Context(), "demo", "--data", data, "--tasks", "3")
 	if code != exitOK {
 		t.Fatalf("exit code %d\n%s%s", code, out, errs)
 	}

@@ -33,9 +33,13 @@ func (m *member) proofread(ctx context.Context) error {
 	return nil
 }
 
+// tell counts a decision, one teller at a time.
 func (t *Team) tell() {
-	if n := int(t.decided.Add(1)); t.Tell != nil {
-		t.Tell(n, t.Tasks*len(Proofreaders))
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	t.decided++
+	if t.Tell != nil {
+		t.Tell(t.decided, t.Tasks*len(Proofreaders))
 	}
 }
 

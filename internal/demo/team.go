@@ -11,7 +11,6 @@ import (
 	"errors"
 	"net/http"
 	"sync"
-	"sync/atomic"
 	"time"
 
 	"fettle.example/fettle/clients/fettle"
@@ -19,10 +18,10 @@ import (
 	"fettle.example/fettle/internal/synth"
 )
 
-// The people of the demonstration.
+// Lead is who assigns, and reviews too.
 const Lead = "rowan"
 
-// Proofreaders of the team; birch reviews as well.
+// Proofreaders are who claims and resolves; birch reviews as well.
 var Proofreaders = []string{"alder", "birch", "cedar"}
 
 // Roles are what everybody may do.
@@ -32,15 +31,17 @@ var Roles = map[string][]string{
 
 // Team is who works, where, and on what they all agree in the end.
 type Team struct {
-	URL     string
-	Volume  string
-	Tokens  map[string]string // by handle
-	Truth   map[uint64]uint64 // true neuron of each supervoxel
-	Seed    uint64
-	Tasks   int     // for each proofreader
-	Lapse   float64 // how many times faster than life they think
-	Tell    func(done, total int)
-	decided atomic.Int64
+	URL    string
+	Volume string
+	Tokens map[string]string // by handle
+	Truth  map[uint64]uint64 // true neuron of each supervoxel
+	Seed   uint64
+	Tasks  int                   // for each proofreader
+	Lapse  float64               // how many times faster than life they think
+	Tell   func(done, total int) // hears of each resolved task; may be nil
+
+	mu      sync.Mutex
+	decided int
 }
 
 // assigned is how many of the best false merges the lead gives to the first proofreader.
