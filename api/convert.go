@@ -8,7 +8,6 @@ import (
 	"fettle.example/fettle/internal/fault"
 	"fettle.example/fettle/ledger"
 	"fettle.example/fettle/ledger/base"
-	"fettle.example/fettle/ledger/cut"
 	"fettle.example/fettle/tasks"
 	"fettle.example/fettle/triage"
 )
@@ -103,7 +102,7 @@ func toEntry(e ledger.Entry) Entry {
 		Reason: e.Reason, Reverses: some(e.Reverses), Before: toIDs(e.Before), After: toIDs(e.After), Joined: toEdges(e.Joined), Cut: toEdges(e.Cut),
 		LeafHash: hex.EncodeToString(e.Leaf[:])}
 	if e.Kind == ledger.KindSplit {
-		cost := float64(e.Cost) * cut.Unit
+		cost := e.LogOdds()
 		seeds := each(e.Seeds, toIDs)
 		out.Cost, out.Seeds = &cost, &seeds
 	}

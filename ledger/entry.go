@@ -7,6 +7,7 @@ import (
 
 	"github.com/google/uuid"
 
+	"fettle.example/fettle/ledger/cut"
 	"fettle.example/fettle/ledger/proof"
 )
 
@@ -47,6 +48,9 @@ type Entry struct {
 	Content  []byte // the canonical bytes that were hashed
 	Leaf     [32]byte
 }
+
+// LogOdds is a split's cost in log-odds (natural logarithm).
+func (e Entry) LogOdds() float64 { return float64(e.Cost) * cut.Unit }
 
 // content is what an entry's bytes say, in the order of RFC 8785. The bytes are frozen: a field may be added, and
 // must then be omitted when empty; none may be renamed, removed or given another meaning. Every number is text,
