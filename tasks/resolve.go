@@ -19,7 +19,7 @@ type Resolve struct {
 	Draft   *ledger.Draft // of the correction: Merge or Split, Expected, Agent, Reason. ID, Person and Task are filled in here
 }
 
-// longestNote is the database's bound, in characters.
+// longestNote is in characters.
 const longestNote = 2000
 
 func (r Resolve) check() error {
@@ -104,11 +104,13 @@ func (q *Queue) correct(ctx context.Context, p Person, claim uuid.UUID, r Resolv
 	if d.Reason == "" {
 		d.Reason = r.Note
 	}
-	e, err := v.Post(ctx, d, ledger.Companion{
-		SQL: `select from claim_resolve($1, $2, 'corrected', $3, $4, $5)`,
-		Args: func(position int64) []any {
-			return []any{claim, p.Handle, r.Note, position, d.Expected}
-		},
+	var e ledger.Entry
+	err = again(func() error {
+		e, err = v.Post(ctx, d, ledger.Companion{
+			SQL:  `select from claim_resolve($1, $2, 'corrected', $3, $4, $5)`,
+			Args: func(position int64) []any { return []any{claim, p.Handle, r.Note, position, d.Expected} },
+		})
+		return err
 	})
 	switch {
 	case pg.Constraint(err) == "segment_held":

@@ -206,9 +206,8 @@ func (q *Queue) undo(ctx context.Context, t Task, p Person, note string) error {
 	if pg.Constraint(err) == "segment_held" {
 		return q.segmentHeld(ctx, v.ID(), p, touched, err)
 	}
-	if fault.CodeOf(err) == "already-reversed" {
-		f, _ := fault.As(err)
-		position, perr := strconv.ParseInt(f.Data["position"].(string), 10, 64)
+	if f, ok := fault.As(err); ok && f.Code == "already-reversed" {
+		position, perr := strconv.ParseInt(fmt.Sprint(f.Data["position"]), 10, 64)
 		if perr != nil {
 			return err
 		}
