@@ -189,6 +189,9 @@ so that claims without an outcome count too), and the share that reviewers accep
 }
 
 func (a *app) printThroughput(days []fettle.PersonDay) error {
+	if a.output == asTable && a.terminal() {
+		return a.drawThroughput(days)
+	}
 	n := func(name string, value func(fettle.PersonDay) int) column[fettle.PersonDay] {
 		return right(name, func(d fettle.PersonDay) string { return fmt.Sprint(value(d)) })
 	}
@@ -201,20 +204,58 @@ func (a *app) printThroughput(days []fettle.PersonDay) error {
 		n("unclear", func(d fettle.PersonDay) int { return d.Unclear }),
 		n("released", func(d fettle.PersonDay) int { return d.Released }),
 		n("expired", func(d fettle.PersonDay) int { return d.Expired }),
-		right("active hours", func(d fettle.PersonDay) string { return fixed(d.ActiveHours, 2) }),
-		right("tasks an hour", func(d fettle.PersonDay) string { return measured(d.TasksPerActiveHour, 1) }),
-		right("minutes false merge", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-merge") }),
-		right("minutes false split", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-split") }),
+		right("active hours", func(d fettle.PersonDay) string { return fixed(d.ActiveHours, 3) }),
+		right("tasks an hour", func(d fettle.PersonDay) string { return measured(d.TasksPerActiveHour, 2) }),
+		right("minutes false merge", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-merge", 2) }),
+		right("minutes false split", func(d fettle.PersonDay) string { return medianOf(d.Kinds, "false-split", 2) }),
 		n("reviewed", func(d fettle.PersonDay) int { return d.Reviewed }),
-		right("accepted", func(d fettle.PersonDay) string { return share(d.AcceptedShare) }))
+		n("accepted", func(d fettle.PersonDay) int { return d.Accepted }),
+		n("returned", func(d fettle.PersonDay) int { return d.Returned }),
+		right("share", func(d fettle.PersonDay) string { return shareOf(d, func(s fettle.Share) float64 { return s.Value }) }),
+		right("share low", func(d fettle.PersonDay) string { return shareOf(d, func(s fettle.Share) float64 { return s.Low }) }),
+		right("share high", func(d fettle.PersonDay) string { return shareOf(d, func(s fettle.Share) float64 { return s.High }) }))
 }
 
-func medianOf(kinds []fettle.KindTime, kind fettle.TaskKind) string {
+// drawThroughput is the same on the width of a terminal.
+func (a *app) drawThroughput(days []fettle.PersonDay) error {
+	err := list(a, days,
+		left("day", func(d fettle.PersonDay) string { return d.Day.Format(time.DateOnly) }),
+		left("person", func(d fettle.PersonDay) string { return d.Person }),
+		right("resolved", func(d fettle.PersonDay) string { return fmt.Sprint(d.Resolved) }),
+		right("outcomes", func(d fettle.PersonDay) string { return fmt.Sprintf("%d/%d/%d", d.Corrected, d.Sound, d.Unclear) }),
+		right("given up", func(d fettle.PersonDay) string { return fmt.Sprint(d.Released + d.Expired) }),
+		right("hours", func(d fettle.PersonDay) string { return fixed(d.ActiveHours, 2) }),
+		right("an hour", func(d fettle.PersonDay) string { return measured(d.TasksPerActiveHour, 1) }),
+		right("minutes each", func(d fettle.PersonDay) string {
+			return first(medianOf(d.Kinds, "false-merge", 1), "-") + " / " + first(medianOf(d.Kinds, "false-split", 1), "-")
+		}),
+		right("accepted", func(d fettle.PersonDay) string { return fmt.Sprintf("%d of %d", d.Accepted, d.Reviewed) }),
+		right("share", func(d fettle.PersonDay) string {
+			if d.AcceptedShare == nil {
+				return ""
+			}
+			return fmt.Sprintf("%s (%s to %s)", percent(d.AcceptedShare.Value), percent(d.AcceptedShare.Low), percent(d.AcceptedShare.High))
+		}))
+	if err == nil {
+		_, err = fmt.Fprintln(a.Out, "outcomes: corrected/sound/unclear; given up: released or run out; hours: active ones; minutes: median for a\n"+
+			"false merge / a false split; share: of the reviewed, with its 95 % interval")
+	}
+	return err
+}
+
+func shareOf(d fettle.PersonDay, part func(fettle.Share) float64) string {
+	if d.AcceptedShare == nil {
+		return ""
+	}
+	return fixed(part(*d.AcceptedShare), 3)
+}
+
+func medianOf(kinds []fettle.KindTime, kind fettle.TaskKind, decimals int) string {
 	i := slices.IndexFunc(kinds, func(k fettle.KindTime) bool { return k.Kind == kind })
 	if i < 0 {
 		return ""
 	}
-	return measured(kinds[i].MedianMinutes, 1)
+	return measured(kinds[i].MedianMinutes, decimals)
 }
 
 // measured writes a figure that may be unknown.
@@ -223,14 +264,6 @@ func measured(v *float64, decimals int) string {
 		return ""
 	}
 	return fixed(*v, decimals)
-}
-
-// share writes a proportion with its interval.
-func share(s *fettle.Share) string {
-	if s == nil {
-		return ""
-	}
-	return fmt.Sprintf("%s (%s to %s)", percent(s.Value), percent(s.Low), percent(s.High))
 }
 
 func parseDay(word string) (*openapi.Date, error) {

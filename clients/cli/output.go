@@ -5,13 +5,13 @@ import (
 	"encoding/json"
 	"fmt"
 	"io"
+	"math"
 	"os"
 	"strconv"
 	"strings"
 	"time"
 
 	"charm.land/lipgloss/v2"
-	"charm.land/lipgloss/v2/table"
 	"golang.org/x/term"
 )
 
@@ -136,32 +136,6 @@ func writeTabs(w io.Writer, head []string, rows [][]string) error {
 	return nil
 }
 
-func drawTable(w io.Writer, width int, head []string, alignRight []bool, rows [][]string) error {
-	if len(rows) == 0 {
-		_, err := fmt.Fprintln(w, "none")
-		return err
-	}
-	t := table.New().Headers(head...).Rows(rows...).
-		Border(lipgloss.NormalBorder()).BorderTop(false).BorderBottom(false).BorderLeft(false).BorderRight(false).
-		BorderColumn(false).BorderHeader(true).BorderStyle(lipgloss.NewStyle().Faint(true)).
-		StyleFunc(func(row, col int) lipgloss.Style {
-			s := lipgloss.NewStyle().PaddingRight(2)
-			if row == table.HeaderRow {
-				s = s.Bold(true)
-			}
-			if alignRight[col] {
-				s = s.Align(lipgloss.Right)
-			}
-			return s
-		})
-	text := t.String()
-	if width > 0 && lipgloss.Width(text) > width {
-		text = t.Width(width).String()
-	}
-	_, err := lipgloss.Fprintln(w, text)
-	return err
-}
-
 // terminal says whether a person is looking at standard output.
 func (a *app) terminal() bool { return a.width() > 0 }
 
@@ -189,8 +163,11 @@ func (a *app) when(t time.Time) string {
 	return t.UTC().Format(time.RFC3339)
 }
 
-// number writes a measure with at most so many decimals.
+// number writes a measure with at most so many decimals, or as a power of ten where those would show nothing.
 func number(x float64, decimals int) string {
+	if x != 0 && math.Abs(x) < math.Pow(10, -float64(decimals)) {
+		return strconv.FormatFloat(x, 'g', 2, 64)
+	}
 	s := strconv.FormatFloat(x, 'f', decimals, 64)
 	if strings.Contains(s, ".") {
 		s = strings.TrimRight(strings.TrimRight(s, "0"), ".")

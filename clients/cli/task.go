@@ -131,7 +131,10 @@ func (a *app) printTask(t fettle.Task) error {
 		{"proposal", proposal(t.Proposal)}, {"assigned to", has(t.AssignedTo)},
 	}
 	for _, f := range t.Findings {
-		fields = append(fields, field{"finding", fmt.Sprintf("%s: %s", f.Detector, evidence(f.Evidence))})
+		fields = append(fields, field{"finding", fmt.Sprintf("%s: %s", f.Detector, f.Said)})
+		for _, e := range f.Evidence {
+			fields = append(fields, field{"", "  " + strings.TrimSpace(e.Name+" "+number(e.Value, 2)+" "+has(e.Unit))})
+		}
 	}
 	if c := t.Claim; c != nil && c.Ended == nil {
 		fields = append(fields, field{"claimed", fmt.Sprintf("by %s until %s", c.Person, a.when(c.Until))})
@@ -194,14 +197,6 @@ func proposal(p *fettle.Proposal) string {
 	return "split " + strings.Join(groups, " ")
 }
 
-func evidence(list []fettle.Evidence) string {
-	parts := make([]string, len(list))
-	for i, e := range list {
-		parts[i] = strings.TrimSpace(e.Name + " " + number(e.Value, 2) + " " + has(e.Unit))
-	}
-	return strings.Join(parts, "; ")
-}
-
 func (a *app) tasksCommand() *cobra.Command {
 	var c choice
 	var state, assigned, person, segment string
@@ -209,7 +204,7 @@ func (a *app) tasksCommand() *cobra.Command {
 	var limit int
 	cmd := &cobra.Command{
 		Use:   "tasks",
-		Short: "List tasks, most worth doing first",
+		Short: "List tasks, the open ones unless told otherwise, most worth doing first",
 		Args:  cobra.NoArgs,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			name, err := a.volumeName(cmd.Context())
@@ -222,6 +217,12 @@ func (a *app) tasksCommand() *cobra.Command {
 					return err
 				}
 				return a.printTasks(held)
+			}
+			if state == "" && person == "" {
+				state = "open"
+			}
+			if state == "all" {
+				state = ""
 			}
 			p := fettle.ListTasksParams{State: optional(fettle.TaskState(state)), Kind: optional(fettle.TaskKind(c.kind)),
 				Family: optional(c.family), AssignedTo: optional(assigned), Person: optional(person), Segment: optional(segment)}
@@ -237,14 +238,14 @@ func (a *app) tasksCommand() *cobra.Command {
 	}
 	c.flags(cmd)
 	f := cmd.Flags()
-	f.StringVar(&state, "state", "", "`STATE`: open, claimed, resolved, accepted, returned or overtaken")
+	f.StringVar(&state, "state", "", "`STATE`: open (default), claimed, resolved, accepted, returned, overtaken, or all (default with --person)")
 	f.StringVar(&assigned, "assigned", "", "assigned to `HANDLE`")
 	f.StringVar(&person, "person", "", "claimed or resolved by `HANDLE`")
 	f.StringVar(&segment, "segment", "", "about this `SEGMENT`")
 	f.BoolVar(&mine, "mine", false, "those that you hold")
 	f.IntVar(&limit, "limit", 50, "at most so many (0: all)")
 	_ = cmd.RegisterFlagCompletionFunc("state", cobra.FixedCompletions(
-		[]string{"open", "claimed", "resolved", "accepted", "returned", "overtaken"}, cobra.ShellCompDirectiveNoFileComp))
+		[]string{"open", "claimed", "resolved", "accepted", "returned", "overtaken", "all"}, cobra.ShellCompDirectiveNoFileComp))
 	return cmd
 }
 

@@ -180,7 +180,7 @@ func TestADay(t *testing.T) {
 	d.audit()
 
 	// The lead looks at the day; the operator reconciles while the server is up.
-	d.says(d.as("rowan", "throughput"), "alder\t3\t2\t1\t0", "birch\t1\t1\t0\t0", "0 % (", "100 % (", "personal data")
+	d.says(d.as("rowan", "throughput"), "alder\t3\t2\t1\t0", "birch\t1\t1\t0\t0", "\t3\t3\t0\t1.000\t0.438\t1.000", "\t1\t0\t1\t0.000\t0.000\t0.793", "personal data")
 	d.refused(5, "alder", "throughput", "--person", "birch")
 	d.says(d.operate("reconcile", "tiny"), "at position 4: 4 entries, 22 supervoxels", "clean: no difference")
 	stop()

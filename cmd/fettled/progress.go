@@ -70,7 +70,7 @@ func (p *progress) line(done, total int64, unit string, now time.Time) string {
 	full := int(share * cells)
 	bar := strings.Repeat("█", full) + strings.Repeat("░", cells-full)
 	if !p.terminal {
-		return fmt.Sprintf("%s  %d of %d %s", p.stage, done, total, unit)
+		return strings.TrimRight(fmt.Sprintf("%s  %d of %d %s", p.stage, done, total, unit), " ")
 	}
 	left := ""
 	if took := now.Sub(p.began); share > 0 && share < 1 && took > 2*time.Second {
