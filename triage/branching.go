@@ -61,12 +61,12 @@ var turningBack = Detector{
 	Name: "turning-back", Family: "branching", Kind: FalseMerge,
 	Says: "a branch at a weak place that turns back by more than 120°",
 	judge: func(c *Case) []Finding {
-		t, ahead := c.tree(), c.tree().heights()
+		t := c.bonds()
 		var out []Finding
 		for i := range c.weak() {
 			w := &c.weak()[i]
 			from, came := t.inwards(w.above, armNM)
-			to, went := t.outwards(w.below, ahead, armNM)
+			to, went := t.outwards(w.below, armNM)
 			if came < armNM || went < armNM {
 				continue
 			}
@@ -93,11 +93,11 @@ var thickDaughter = Detector{
 	Name: "thick-daughter", Family: "branching", Kind: FalseMerge,
 	Says: "a branch at a weak place that is much thicker than its parent",
 	judge: func(c *Case) []Finding {
-		t, ahead := c.tree(), c.tree().heights()
+		t := c.bonds()
 		var out []Finding
 		for i := range c.weak() {
 			w := &c.weak()[i]
-			daughter, ok1 := c.calibre(w.below, func(v int32) int32 { return deepest(t, ahead, v) })
+			daughter, ok1 := c.calibre(w.below, t.onwards)
 			parent, ok2 := c.calibre(w.above, func(v int32) int32 { return t.parent[v] })
 			if !ok1 || !ok2 || daughter < thicker*parent {
 				continue
@@ -112,16 +112,6 @@ var thickDaughter = Detector{
 		}
 		return best(out, bridgeMost)
 	},
-}
-
-func deepest(t *tree, ahead []float64, v int32) int32 {
-	next := none
-	for _, k := range t.twigs[v] {
-		if next == none || t.length[k]+ahead[k] > t.length[next]+ahead[next] {
-			next = k
-		}
-	}
-	return next
 }
 
 // calibre is the median radius over an arm's first micrometre and more; absent for arms of fewer than four supervoxels.
@@ -141,7 +131,7 @@ func (c *Case) calibre(v int32, next func(int32) int32) (float64, bool) {
 // arms lists the directions in which a supervoxel's side of a tree edge goes on: paths that leave its near neighbourhood and
 // reach far enough.
 func (c *Case) arms(at, not int32) []base.Point {
-	t, ahead := c.tree(), c.tree().heights()
+	t := c.bonds()
 	type step struct {
 		node, from int32
 		came       float64
@@ -164,7 +154,7 @@ func (c *Case) arms(at, not int32) []base.Point {
 			if t.parent[s.node] == k {
 				end, went = t.inwards(k, armNM)
 			} else {
-				end, went = t.outwards(k, ahead, armNM)
+				end, went = t.outwards(k, armNM)
 			}
 			if u, ok := direction(c.Points[at], c.Points[end]); ok && s.came+nm+went >= armNM {
 				out = append(out, u)

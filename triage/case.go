@@ -24,7 +24,8 @@ type Case struct {
 	start []int32
 	arcs  []base.Arc
 	edges []cut.Edge
-	tree  func() *tree
+	tree  func() *tree // its shape
+	bonds func() *tree // its firmest contacts
 	weak  func() []weakPlace
 	tips  func() map[int32]tip
 }
@@ -37,6 +38,7 @@ func NewCase(w *base.View, sizes stats.Robust, sizesOK bool) *Case {
 	}
 	c.start, c.arcs = w.Adjacency()
 	c.tree = sync.OnceValue(func() *tree { return growTree(c) })
+	c.bonds = sync.OnceValue(func() *tree { return growBonds(c) })
 	c.weak = sync.OnceValue(func() []weakPlace { return findWeak(c) })
 	c.tips = sync.OnceValue(c.findTips)
 	return c

@@ -87,7 +87,7 @@ func TestWeakPlacesWeighTheirCuts(t *testing.T) {
 			}
 		}
 		c := d.done()
-		tr := c.tree()
+		tr := c.bonds()
 		for _, w := range c.weak() {
 			places++
 			below := make([]bool, n)

@@ -78,7 +78,6 @@ func (c *Case) findTips() map[int32]tip {
 	if c.Len() < 2 {
 		return out
 	}
-	high := t.heights()
 	note := func(end, inner int32, length float64, next func(int32) int32) {
 		u, ok := direction(c.Points[inner], c.Points[end])
 		if !ok || length < tipNM {
@@ -100,8 +99,8 @@ func (c *Case) findTips() map[int32]tip {
 		}
 	}
 	if len(t.twigs[t.root]) == 1 && len(c.Nuclei) == 0 {
-		inner, came := t.outwards(t.root, high, tipNM)
-		note(t.root, inner, came, func(k int32) int32 { return deepest(t, high, k) })
+		inner, came := t.outwards(t.root, tipNM)
+		note(t.root, inner, came, t.onwards)
 	}
 	return out
 }

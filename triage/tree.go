@@ -1,10 +1,13 @@
 package triage
 
 import (
+	"cmp"
 	"container/heap"
 	"math"
+	"slices"
 
 	"fettle.example/fettle/ledger/base"
+	"fettle.example/fettle/ledger/cut"
 )
 
 // tree is a segment's shape without its loops: each supervoxel's way to the root along shortest paths that prefer sure
@@ -17,6 +20,7 @@ type tree struct {
 	length []float64 // nm to the parent
 	depth  []float64 // nm to the root along the tree
 	twigs  [][]int32 // children
+	ahead  []float64 // nm to the farthest leaf below
 	cable  float64   // nm
 }
 
@@ -39,10 +43,10 @@ func detour(c base.Contact) float64 {
 // growTree roots the segment at a nucleus, else at its thickest supervoxel. O(m log n).
 func growTree(c *Case) *tree {
 	n := c.Len()
-	t := &tree{root: rootOf(c), parent: make([]int32, n), length: make([]float64, n), depth: make([]float64, n), twigs: make([][]int32, n)}
+	t := newTree(c)
 	far := make([]float64, n)
 	for i := range far {
-		far[i], t.parent[i] = math.Inf(1), none
+		far[i] = math.Inf(1)
 	}
 	done := make([]bool, n)
 	grow := func(from int32) {
@@ -57,9 +61,8 @@ func growTree(c *Case) *tree {
 			t.order = append(t.order, at.node)
 			for _, a := range c.at(at.node) {
 				k := c.Contacts[a.Contact]
-				nm := c.Points[at.node].Distance(c.Points[a.To])
-				if d := at.cost + nm*detour(k); d < far[a.To] {
-					far[a.To], t.parent[a.To], t.length[a.To] = d, at.node, nm
+				if d := at.cost + c.Points[at.node].Distance(c.Points[a.To])*detour(k); d < far[a.To] {
+					far[a.To], t.parent[a.To] = d, at.node
 					heap.Push(h, reach{a.To, d})
 				}
 			}
@@ -68,18 +71,86 @@ func growTree(c *Case) *tree {
 	grow(t.root)
 	for i := range int32(n) {
 		if !done[i] {
-			t.parent[i] = none
 			grow(i)
 		}
 	}
+	t.measure(c)
+	return t
+}
+
+// growBonds is the other tree that a segment has: the one that its firmest contacts make (Kruskal 1956). Where two cells were
+// glued together, it crosses from one to the other once, over the firmest of the contacts between them. O(m log m).
+func growBonds(c *Case) *tree {
+	t := newTree(c)
+	order := make([]int32, len(c.Contacts))
+	for i := range order {
+		order[i] = int32(i)
+	}
+	slices.SortStableFunc(order, func(a, b int32) int { return -cmp.Compare(firmness(c.Contacts[a]), firmness(c.Contacts[b])) })
+	sets := cut.NewSets(c.Len())
+	bonds := make([][]int32, c.Len())
+	for _, k := range order {
+		if a, b := c.Contacts[k].A, c.Contacts[k].B; sets.Union(a, b) {
+			bonds[a], bonds[b] = append(bonds[a], b), append(bonds[b], a)
+		}
+	}
+	seen := make([]bool, c.Len())
+	spread := func(from int32) {
+		seen[from] = true
+		at := len(t.order)
+		for t.order = append(t.order, from); at < len(t.order); at++ {
+			v := t.order[at]
+			for _, k := range bonds[v] {
+				if !seen[k] {
+					seen[k], t.parent[k] = true, v
+					t.order = append(t.order, k)
+				}
+			}
+		}
+	}
+	spread(t.root)
+	for i := range int32(c.Len()) {
+		if !seen[i] {
+			spread(i)
+		}
+	}
+	t.measure(c)
+	return t
+}
+
+func firmness(c base.Contact) float64 {
+	if c.Link {
+		return 2
+	}
+	return c.Affinity
+}
+
+func newTree(c *Case) *tree {
+	n := c.Len()
+	t := &tree{root: rootOf(c), parent: make([]int32, n), length: make([]float64, n), depth: make([]float64, n),
+		twigs: make([][]int32, n), ahead: make([]float64, n)}
+	for i := range t.parent {
+		t.parent[i] = none
+	}
+	return t
+}
+
+// measure fills in what follows from order and parents.
+func (t *tree) measure(c *Case) {
 	for _, v := range t.order {
 		if p := t.parent[v]; p != none {
+			t.length[v] = c.Points[v].Distance(c.Points[p])
 			t.depth[v] = t.depth[p] + t.length[v]
 			t.twigs[p] = append(t.twigs[p], v)
 			t.cable += t.length[v]
 		}
 	}
-	return t
+	for k := len(t.order) - 1; k >= 0; k-- {
+		v := t.order[k]
+		if p := t.parent[v]; p != none {
+			t.ahead[p] = max(t.ahead[p], t.ahead[v]+t.length[v])
+		}
+	}
 }
 
 func rootOf(c *Case) int32 {
@@ -108,16 +179,11 @@ func (t *tree) sums(value func(i int32) float64) []float64 {
 	return out
 }
 
-// outwards walks from a supervoxel away from its parent, each time to the child with the longest way ahead, until the path
-// is as long as asked, and returns where it ends and how far it came.
-func (t *tree) outwards(v int32, ahead []float64, nm float64) (end int32, came float64) {
+// outwards walks from a supervoxel away from the root, each time to the child with the longest way ahead, until the path is as
+// long as asked, and returns where it ends and how far it came.
+func (t *tree) outwards(v int32, nm float64) (end int32, came float64) {
 	for came < nm {
-		next := none
-		for _, k := range t.twigs[v] {
-			if next == none || t.length[k]+ahead[k] > t.length[next]+ahead[next] {
-				next = k
-			}
-		}
+		next := t.onwards(v)
 		if next == none {
 			break
 		}
@@ -136,16 +202,15 @@ func (t *tree) inwards(v int32, nm float64) (end int32, came float64) {
 	return v, came
 }
 
-// heights is how far the farthest leaf below each supervoxel is, nm.
-func (t *tree) heights() []float64 {
-	out := make([]float64, len(t.parent))
-	for k := len(t.order) - 1; k >= 0; k-- {
-		v := t.order[k]
-		if p := t.parent[v]; p != none {
-			out[p] = max(out[p], out[v]+t.length[v])
+// onwards is the child with the longest way ahead; none at a leaf.
+func (t *tree) onwards(v int32) int32 {
+	next := none
+	for _, k := range t.twigs[v] {
+		if next == none || t.length[k]+t.ahead[k] > t.length[next]+t.ahead[next] {
+			next = k
 		}
 	}
-	return out
+	return next
 }
 
 // reached is the queue of a shortest-path search; ties by the lower supervoxel, so that the tree is always the same.

@@ -9,8 +9,8 @@ import (
 	"fettle.example/fettle/ledger/cut"
 )
 
-// weakPlace is a place where little holds a segment together: the cut between a supervoxel's subtree and the rest. Every
-// bridge is one, and so is a false merge made by a few contacts, because a shortest-path tree crosses it once.
+// weakPlace is a place where little holds a segment together: the cut between a supervoxel's subtree and the rest, in the tree of
+// the firmest contacts. Every bridge is one, and so is a false merge, because that tree crosses it once.
 type weakPlace struct {
 	below, above int32   // the tree edge: child and parent
 	contacts     int     // that cross
@@ -30,8 +30,9 @@ const (
 	// weakPrior is the log-odds that a weak place is sound, before its contacts are heard: 20 to 1, our own prior. Real necks are
 	// thin, and far more numerous than false merges.
 	weakPrior = 3.0
-	// temper divides the contacts' summed log-odds, because contacts of the same two bodies err together.
-	temper = 2.0
+	// temper divides the log-odds of the contacts that speak against one cell, because those of the same two bodies err together;
+	// againstMost bounds what they say in all, because far parts of one cell that touch in passing say the same.
+	temper, againstMost = 2.0, 6.0
 	// beliefMost bounds what one contact may say, in log-odds: 99 to 1.
 	beliefMost = 4.6
 )
@@ -42,7 +43,8 @@ func (w *weakPlace) probability() float64 { return w.given(1) }
 
 // given is the probability in the light of further evidence, which is so many times likelier at a false merge than elsewhere.
 func (w *weakPlace) given(ratio float64) float64 {
-	return 1 / (1 + math.Exp(weakPrior+w.belief/temper)/ratio)
+	against := min((w.odds-w.belief)/temper, againstMost)
+	return 1 / (1 + math.Exp(weakPrior+w.odds-against)/ratio)
 }
 
 // belief is what one contact says.
@@ -72,8 +74,8 @@ func (c *Case) moved(w *weakPlace) float64 {
 }
 
 const (
-	// weakOdds is the most that may hold a weak place together: one contact of affinity 0.97, or several weaker ones.
-	weakOdds = 3.5
+	// weakOdds is the most that may hold a weak place together, in log-odds: beyond it no other sign would make up for it.
+	weakOdds = 6.0
 	// weakLeast is the fewest supervoxels a side must have: twigs of fewer are not worth a look of their own.
 	weakLeast = 4
 )
@@ -82,7 +84,7 @@ const (
 // edges on the tree's way between its ends, so adding it at both ends and taking it off twice at their meeting point gives
 // every cut's weight as a subtree sum (the 1-respecting cuts of Karger 2000, J. ACM 47:46). O((n + m) log n).
 func findWeak(c *Case) []weakPlace {
-	t := c.tree()
+	t := c.bonds()
 	n := c.Len()
 	odds, says, crossing := make([]float64, n), make([]float64, n), make([]float64, n)
 	meet := newMeeting(t)
@@ -141,7 +143,7 @@ type sides struct {
 }
 
 func (c *Case) sides() *sides {
-	t := c.tree()
+	t := c.bonds()
 	n := c.Len()
 	in, out, every, nuclei := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
 	for _, s := range c.Synapses {
@@ -200,7 +202,7 @@ func (c *Case) propose(w *weakPlace) *Proposal {
 // seeds walks from a supervoxel over strong contacts, never over the tree edge to the one it must keep away from nor to the
 // tree's other side, and takes the first few that are some steps away; the supervoxel itself when there is nothing else.
 func (c *Case) seeds(from, not int32) []int32 {
-	t := c.tree()
+	t := c.bonds()
 	seen := map[int32]int{from: 0, not: -1}
 	queue := []int32{from}
 	var out []int32
