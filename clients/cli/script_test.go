@@ -117,6 +117,7 @@ func open(t *testing.T, env *testscript.Env) error {
 	server := httptest.NewServer(api.New(api.Config{Pool: pool, Ledger: led, People: people, Queue: queue, Log: log}).Handler())
 	env.Defer(server.Close)
 	env.Setenv("FETTLE_URL", server.URL)
+	env.Setenv("GORACE", "atexit_sleep_ms=0") // under the race detector a program else waits a second at its end
 	env.Setenv("XDG_CONFIG_HOME", env.WorkDir+"/config")
 	env.Values[houseKey{}] = &house{v, queue}
 	return nil
