@@ -243,17 +243,20 @@ create function task_claim(volume int, who text, wanted bigint, kinds text[], fa
                            out t task, out c claim)
 language plpgsql set plan_cache_mode = force_generic_plan set enable_seqscan = off set enable_bitmapscan = off as $$
 declare
+    holds boolean;
     alone boolean;
 begin
-    -- One claim of a person at a time: whoever asks twice waits here, and then finds the first.
-    perform from person where handle = who and left_at is null and 'proofreader' = any (roles) for no key update;
+    -- One claim of a person at a time: whoever asks twice waits here. (Then holds is what it was before the wait, and
+    -- claim_one_a_person refuses.)
+    select exists (select from claim x where x.volume_id = volume and x.person = who and x.ended is null),
+           wanted is not null or exists (select from task x where x.volume_id = volume and x.assigned_to = who and x.state = 'open')
+      into holds, alone
+      from person where handle = who and left_at is null and 'proofreader' = any (roles) for no key update;
     if not found then
         perform refuse('claim_proofreader', 'only a proofreader claims');
-    elsif exists (select from claim x where x.volume_id = volume and x.person = who and x.ended is null) then
+    elsif holds then
         perform refuse('claim_one_a_person', 'this person holds a task');
     end if;
-    alone := wanted is not null
-          or exists (select from task x where x.volume_id = volume and x.assigned_to = who and x.state = 'open');
     if alone then
         perform task_lock_alone(volume);
     else
@@ -371,8 +374,9 @@ declare
     f     record;
     waits int := 0;
 begin
-    delete from lease l where l.volume_id = t.volume_id and l.segment_id = any (t.segments) and l.claim_id = id;
     for f in
+        with given_up as (
+             delete from lease l where l.volume_id = t.volume_id and l.segment_id = any (t.segments) and l.claim_id = id)
         select h.number, count(*) lines
           from unnest(t.segments) s cross join lateral task_head(t.volume_id, s) h
          where rank is null or h.priority > rank or h.priority = rank and h.number < t.number
@@ -439,8 +443,12 @@ declare
     volume int := claim_enter(id, who);
     waits  int;
 begin
-    update claim set ended = 'resolved', ended_at = now(), outcome = how, note = why, position = of_entry
-     where claim_id = id returning * into c;
+    with resolved as (
+         update claim set ended = 'resolved', ended_at = now(), outcome = how, note = why, position = of_entry
+          where claim_id = id returning *),
+    noted as (
+         insert into task_event (volume_id, number, person, what, note) select volume, number, who, 'resolved', how from resolved)
+    select * into c from resolved;
     update task x set state = 'resolved' where x.volume_id = volume and x.number = c.number returning * into t;
     if of_entry is not null then
         if not changed && t.segments then
@@ -449,7 +457,6 @@ begin
         perform segments_unheld(volume, who, changed);
     end if;
     waits := lease_end(id, t, null);
-    insert into task_event (volume_id, number, person, what, note) values (volume, c.number, who, 'resolved', how);
 end $$;
 
 -- Stores what a second person said. reversal is the position of the entry that undid a returned correction, and

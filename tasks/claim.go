@@ -35,7 +35,7 @@ type ClaimOptions struct {
 //	              ->  Index Scan using segment_pkey on segment g (actual time=0.004..0.004 rows=0 loops=1)
 //	                    Index Cond: ((volume_id = $1) AND (segment_id = ANY (x.segments)))
 //	                    Filter: (retired IS NOT NULL)
-const claimSQL = wholeTask + ` from task_claim($1, $2, nullif($3, 0), $4, $5, $6, $7) f` + ofFunction
+var claimSQL = selectReturned(`task_claim($1, $2, nullif($3, 0), $4, $5, $6, $7)`)
 
 // Claim takes the best task that this person may have, those assigned to them first, or the one named. Nothing left:
 // fault.NotFound "queue-empty". A person holds one task of a volume at a time; a second is fault.Conflict, and names

@@ -36,15 +36,14 @@ const (
 	largestPage = 1000
 )
 
-// wholeTask are the columns that scanTask reads: a task t, its place p, its claim c, its review r, its volume v.
-const wholeTask = `
+// taskColumns are what scanTask reads of a task t, its place p and its claim c; its review and its volume's name follow.
+const taskColumns = `
 	select t.number, p.task_id, p.place, t.family, t.kind, t.state, t.segments, t.waits, t.priority, coalesce(t.assigned_to, ''),
 	       p.probability, p.gain, p.minutes, p.point_nm, p.made_at, p.said, p.findings, p.proposal,
-	       c.claim_id, c.person, c.claimed_at, c.until, c.ended_at, c.ended, c.outcome, c.note, c.position,
-	       r.person, r.verdict, r.note, r.reviewed_at, r.position, v.name`
+	       c.claim_id, c.person, c.claimed_at, c.until, c.ended_at, c.ended, c.outcome, c.note, c.position`
 
 // selectTasks reads tasks of the volume $1; conditions are added.
-const selectTasks = wholeTask + `
+const selectTasks = taskColumns + `, r.person, r.verdict, r.note, r.reviewed_at, r.position, v.name
 	  from task t
 	  join task_place p using (volume_id, number)
 	  join volume v using (volume_id)
@@ -52,14 +51,15 @@ const selectTasks = wholeTask + `
 	  left join review r on r.claim_id = t.claim_id
 	 where t.volume_id = $1`
 
-// ofFunction reads the task and the claim that a function returns, since a query can't see in the tables what
-// a function that it calls has just written there.
-const ofFunction = `
+// selectReturned reads the task and the claim that a function returns, since a query can't see in the tables what a
+// function that it calls has just written there. Neither has a review yet.
+func selectReturned(function string) string {
+	return taskColumns + `, null, null, null, null, null, (select name from volume v where v.volume_id = t.volume_id)
+	  from ` + function + ` f
 	 cross join lateral (select (f.t).*) t
 	 cross join lateral (select (f.c).*) c
-	  join task_place p on p.volume_id = t.volume_id and p.number = t.number
-	  join volume v on v.volume_id = t.volume_id
-	  left join review r on r.claim_id = t.claim_id`
+	  join task_place p on p.volume_id = t.volume_id and p.number = t.number`
+}
 
 func scanTask(row pgx.CollectableRow) (Task, error) {
 	var t Task

@@ -71,7 +71,7 @@ func (q *Queue) Resolve(ctx context.Context, p Person, claim uuid.UUID, r Resolv
 	return Task{}, nil, q.liveClaim(ctx, claim, err)
 }
 
-const resolveSQL = wholeTask + ` from claim_resolve($1, $2, $3, $4, null, null) f` + ofFunction
+var resolveSQL = selectReturned(`claim_resolve($1, $2, $3, $4, null, null)`)
 
 func (q *Queue) resolve(ctx context.Context, p Person, claim uuid.UUID, r Resolve) (t Task, e *ledger.Entry, err error) {
 	if r.Outcome == Corrected {
