@@ -20,7 +20,7 @@ const (
 // How many times likelier each sign is at a false merge than at a sound weak place. Our own estimates, and so are the thresholds,
 // for no published ones were found; to be learned from outcomes.
 const (
-	crossingRatio = 20.0
+	crossingRatio = 3.0
 	turningRatio  = 4.0
 	thickRatio    = 2.0
 )
@@ -34,12 +34,11 @@ var crossing = Detector{
 		var out []Finding
 		for i := range c.weak() {
 			w := &c.weak()[i]
-			mine, theirs := c.arms(w.below, w.above), c.arms(w.above, w.below)
-			if len(mine) < 2 || len(theirs) < 2 {
+			if len(w.mine) < 2 || len(w.theirs) < 2 {
 				continue
 			}
-			pairing, ok := bestPairing(append(slices.Clone(mine), theirs...))
-			if !ok || !pairing.within(len(mine)) {
+			pairing, ok := bestPairing(append(slices.Clone(w.mine), w.theirs...))
+			if !ok || !pairing.within(len(w.mine)) {
 				continue
 			}
 			p := w.given(crossingRatio)
@@ -49,7 +48,7 @@ var crossing = Detector{
 				Evidence{"angle of the other", pairing.second, "°"},
 				Evidence{"next best pairing is worse by", pairing.margin, "°"},
 				Evidence{"contacts between the pairs", float64(w.contacts), ""},
-				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
+				Evidence{"what contacts nearby say against one cell", w.against, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},
@@ -81,7 +80,7 @@ var turningBack = Detector{
 				fmt.Sprintf("a branch turns back by %.0f°", turn),
 				Evidence{"deflection", turn, "°"},
 				Evidence{"contacts at its base", float64(w.contacts), ""},
-				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
+				Evidence{"what contacts nearby say against one cell", w.against, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},
@@ -108,7 +107,7 @@ var thickDaughter = Detector{
 				Evidence{"radius of the branch", daughter, "nm"},
 				Evidence{"radius of its parent", parent, "nm"},
 				Evidence{"Rall's ratio", math.Pow(daughter/parent, 1.5), ""},
-				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
+				Evidence{"what contacts nearby say against one cell", w.against, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},

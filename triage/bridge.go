@@ -32,8 +32,10 @@ var weakBridge = Detector{
 				fmt.Sprintf("%s %d supervoxels to the rest", what, w.supervoxels[s]),
 				Evidence{"contacts that cross", float64(w.contacts), ""},
 				Evidence{"affinity of the one at the place", w.strongest, ""},
-				Evidence{"what they say for one cell", w.belief, "nat"},
+				Evidence{"what those nearby say against one cell", w.against, "nat"},
 				Evidence{"cost of cutting them", w.odds, "nat"},
+				Evidence{"ways on from it", float64(len(w.mine)), ""},
+				Evidence{"and on the other side", float64(len(w.theirs)), ""},
 				Evidence{"smaller side", float64(w.supervoxels[s]), "supervoxels"},
 				Evidence{"smaller side", w.cable[s] / 1000, "µm"},
 				Evidence{"synapses there", float64(w.synapses[s]), ""}))

@@ -45,7 +45,7 @@ var polarityConflict = Detector{
 				Evidence{"synapse flow centrality", float64(flow.sum()), "paths"},
 				Evidence{"inputs on the smaller side", float64(w.in[w.smaller()]), ""},
 				Evidence{"outputs on the smaller side", float64(w.out[w.smaller()]), ""},
-				Evidence{"what the contacts say for one cell", w.belief, "nat"}))
+				Evidence{"what contacts nearby say against one cell", w.against, "nat"}))
 		}
 		return best(out, bridgeMost)
 	},

@@ -98,16 +98,16 @@ func TestWeakPlacesWeighTheirCuts(t *testing.T) {
 					size++
 				}
 			}
-			contacts, odds, says := 0, 0.0, 0.0
+			contacts, odds, most := 0, 0.0, 0.0
 			for k, e := range c.edges {
 				if below[e.A] != below[e.B] {
 					contacts++
 					odds += float64(e.Capacity) * cut.Unit
-					says += belief(c.Contacts[k])
+					most += against(c.Contacts[k])
 				}
 			}
-			if contacts != w.contacts || size != w.supervoxels[0] || math.Abs(odds-w.odds) > 1e-9 || math.Abs(says-w.belief) > 1e-9 {
-				t.Fatalf("%+v; counted %d contacts, %v, %v, %d supervoxels", w, contacts, odds, says, size)
+			if contacts != w.contacts || size != w.supervoxels[0] || math.Abs(odds-w.odds) > 1e-9 || w.against > most+1e-9 {
+				t.Fatalf("%+v; counted %d contacts, %v, %v, %d supervoxels", w, contacts, odds, most, size)
 			}
 		}
 	}

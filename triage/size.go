@@ -45,7 +45,7 @@ var sizeOutlier = Detector{
 			return []Finding{c.finding(fmt.Sprintf("size-%d", c.IDs[root]), c.Points[root], sizePrior, c.worth(len(c.Synapses)/2, c.tree().cable/2), nil,
 				said+"; no weak place in it", evidence...)}
 		}
-		evidence = append(evidence, Evidence{"what the contacts at its weakest place say for one cell", place.belief, "nat"})
+		evidence = append(evidence, Evidence{"what contacts at its weakest place say against one cell", place.against, "nat"})
 		p := place.given(sizeRatio)
 		return []Finding{c.finding(c.pairKey(place.below, place.above), c.between(place.below, place.above), p, c.moved(place), c.propose(place), said, evidence...)}
 	},

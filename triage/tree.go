@@ -213,6 +213,34 @@ func (t *tree) onwards(v int32) int32 {
 	return next
 }
 
+// intervals number the supervoxels so that each subtree is one run of numbers.
+type intervals struct{ first, last []int32 }
+
+func (t *tree) intervals() *intervals {
+	n := len(t.parent)
+	in := &intervals{first: make([]int32, n), last: make([]int32, n)}
+	size := t.sums(func(int32) float64 { return 1 })
+	next := int32(0)
+	free := make([]int32, n) // the first number that is free below each supervoxel
+	for _, v := range t.order {
+		if p := t.parent[v]; p == none {
+			in.first[v] = next
+			next += int32(size[v])
+		} else {
+			in.first[v] = free[p]
+			free[p] += int32(size[v])
+		}
+		in.last[v] = in.first[v] + int32(size[v])
+		free[v] = in.first[v] + 1
+	}
+	return in
+}
+
+// holds says whether a supervoxel is in the subtree of another.
+func (in *intervals) holds(top, v int32) bool {
+	return in.first[top] <= in.first[v] && in.first[v] < in.last[top]
+}
+
 // reached is the queue of a shortest-path search; ties by the lower supervoxel, so that the tree is always the same.
 type reached []reach
 

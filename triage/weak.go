@@ -12,10 +12,11 @@ import (
 // weakPlace is a place where little holds a segment together: the cut between a supervoxel's subtree and the rest, in the tree of
 // the firmest contacts. Every bridge is one, and so is a false merge, because that tree crosses it once.
 type weakPlace struct {
-	below, above int32   // the tree edge: child and parent
-	contacts     int     // that cross
-	odds         float64 // what cutting them costs: log-odds, never less than a unit each
-	belief       float64 // what they say: log-odds, with those that speak against one cell
+	below, above int32        // the tree edge: child and parent
+	contacts     int          // that cross
+	odds         float64      // what cutting them costs: log-odds, never less than a unit each
+	against      float64      // what those of them nearby say against one cell, log-odds
+	mine, theirs []base.Point // directions in which the two sides go on from here
 	// What is on the side of the subtree, and on the other.
 	supervoxels [2]int
 	voxels      [2]float64
@@ -31,32 +32,39 @@ const (
 	// thin, and far more numerous than false merges.
 	weakPrior = 3.0
 	// temper divides the log-odds of the contacts that speak against one cell, because those of the same two bodies err together;
-	// againstMost bounds what they say in all, because far parts of one cell that touch in passing say the same.
+	// againstMost bounds what they say in all.
 	temper, againstMost = 2.0, 6.0
+	// againstNM is how near to the place they must be: elsewhere, parts of one cell touch in passing and say the same.
+	againstNM = 2000.0
 	// beliefMost bounds what one contact may say, in log-odds: 99 to 1.
 	beliefMost = 4.6
+	// How many times likelier it is at a false merge than at a sound weak place that both sides go on in two directions or more,
+	// as two neurites do that touch in passing; and that each goes on in one, as a single neurite does. Our own estimates.
+	passingRatio, seriesRatio = 6.0, 0.4
 )
 
-// probability that the two sides are two cells, from what the contacts between them say. Two neurites that touch in passing
-// have many contacts, and all but one or two of them speak against one cell; a thin neck has one, which speaks for it.
+// probability that the two sides are two cells, from what the contacts between them say and how the two lie. Two neurites that
+// touch in passing have many contacts, and all but one or two of them speak against one cell; a thin neck has one, for it.
 func (w *weakPlace) probability() float64 { return w.given(1) }
 
 // given is the probability in the light of further evidence, which is so many times likelier at a false merge than elsewhere.
 func (w *weakPlace) given(ratio float64) float64 {
-	against := min((w.odds-w.belief)/temper, againstMost)
-	return 1 / (1 + math.Exp(weakPrior+w.odds-against)/ratio)
+	switch {
+	case len(w.mine) >= 2 && len(w.theirs) >= 2:
+		ratio *= passingRatio
+	case len(w.mine) <= 1 && len(w.theirs) <= 1:
+		ratio *= seriesRatio
+	}
+	return 1 / (1 + math.Exp(weakPrior+w.odds-min(w.against/temper, againstMost))/ratio)
 }
 
-// belief is what one contact says.
-func belief(c base.Contact) float64 {
-	switch {
-	case c.Link:
-		return beliefMost
-	case c.Assumed:
-		return 0 // nobody looked
+// against is what a contact says against one cell, in log-odds: nothing when it speaks for it, or nobody looked.
+func against(c base.Contact) float64 {
+	if c.Link || c.Assumed {
+		return 0
 	}
 	p := min(max(c.Affinity, 1e-6), 1-1e-6)
-	return min(max(math.Log(p/(1-p)), -beliefMost), beliefMost)
+	return min(max(0, math.Log((1-p)/p)), beliefMost)
 }
 
 // smaller is which side has fewer voxels.
@@ -86,7 +94,7 @@ const (
 func findWeak(c *Case) []weakPlace {
 	t := c.bonds()
 	n := c.Len()
-	odds, says, crossing := make([]float64, n), make([]float64, n), make([]float64, n)
+	odds, crossing := make([]float64, n), make([]float64, n)
 	meet := newMeeting(t)
 	for k, contact := range c.Contacts {
 		a, b := contact.A, contact.B
@@ -98,31 +106,53 @@ func findWeak(c *Case) []weakPlace {
 		odds[a] += weight
 		odds[b] += weight
 		odds[top] -= 2 * weight // which may be one of the two
-		said := belief(contact)
-		says[a] += said
-		says[b] += said
-		says[top] -= 2 * said
 		crossing[a]++
 		crossing[b]++
 		crossing[top] -= 2
 	}
 	at := func(x []float64) func(int32) float64 { return func(i int32) float64 { return x[i] } }
-	sumOdds, sumSays, sumCrossing := t.sums(at(odds)), t.sums(at(says)), t.sums(at(crossing))
-	side := c.sides()
+	sumOdds, sumCrossing := t.sums(at(odds)), t.sums(at(crossing))
+	side, below := c.sides(), t.intervals()
 	var out []weakPlace
 	for v := range int32(n) {
 		if t.parent[v] == none || sumOdds[v] > weakOdds {
 			continue
 		}
 		w := side.place(v, t.parent[v])
-		w.odds, w.belief, w.contacts = max(0, sumOdds[v]), sumSays[v], int(math.Round(sumCrossing[v]))
+		w.odds, w.contacts = max(0, sumOdds[v]), int(math.Round(sumCrossing[v]))
 		if min(w.supervoxels[0], w.supervoxels[1]) < weakLeast {
 			continue
 		}
 		w.strongest = c.strongest(v, t.parent[v])
+		w.mine, w.theirs = c.arms(v, t.parent[v]), c.arms(t.parent[v], v)
+		w.against = c.againstNear(&w, below)
 		out = append(out, w)
 	}
 	return out
+}
+
+// againstNear adds up what contacts near a weak place say against one cell, of those that cross it.
+func (c *Case) againstNear(w *weakPlace, below *intervals) float64 {
+	middle := c.between(w.below, w.above)
+	seen := map[int32]bool{w.below: true, w.above: true}
+	queue := []int32{w.below, w.above}
+	var sum float64
+	for len(queue) > 0 {
+		v := queue[0]
+		queue = queue[1:]
+		inside := below.holds(w.below, v)
+		for _, a := range c.at(v) {
+			k := c.Contacts[a.Contact]
+			if inside && !below.holds(w.below, a.To) { // counted from the inside, once
+				sum += against(k)
+			}
+			if !seen[a.To] && c.Points[a.To].Distance(middle) <= againstNM {
+				seen[a.To] = true
+				queue = append(queue, a.To)
+			}
+		}
+	}
+	return sum
 }
 
 // strongest is the affinity of the contact at a tree edge.
