@@ -163,8 +163,12 @@ func (a *app) when(t time.Time) string {
 	return t.UTC().Format(time.RFC3339)
 }
 
-// number writes a measure with at most so many decimals, or as a power of ten where those would show nothing.
+// number writes a measure with at most so many decimals: none from 100 on, and with digits that count where so many
+// would show nothing.
 func number(x float64, decimals int) string {
+	if math.Abs(x) >= 100 {
+		decimals = 0
+	}
 	if x != 0 && math.Abs(x) < math.Pow(10, -float64(decimals)) {
 		return strconv.FormatFloat(x, 'g', 2, 64)
 	}

@@ -3,7 +3,6 @@ package cli
 import (
 	"fmt"
 	"io"
-	"slices"
 	"strings"
 
 	"charm.land/lipgloss/v2"
@@ -61,13 +60,17 @@ func fit(width int, rows [][]string) []int {
 	for _, n := range wide {
 		over += n + gutter
 	}
-	for over > 0 {
-		widest := slices.IndexFunc(wide, func(n int) bool { return n == slices.Max(wide) })
-		if wide[widest] <= word[widest] {
-			break
+	for ; over > 0; over-- {
+		widest := -1
+		for i := range wide {
+			if wide[i] > word[i] && (widest < 0 || wide[i] > wide[widest]) {
+				widest = i
+			}
+		}
+		if widest < 0 {
+			break // nothing gives way any more, and the terminal wraps
 		}
 		wide[widest]--
-		over--
 	}
 	return wide
 }
