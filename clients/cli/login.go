@@ -111,7 +111,8 @@ can read. Elsewhere than at a terminal the token is the first line of standard i
 			if err != nil {
 				return err
 			}
-			if a.url = first(a.url, os.Getenv("FETTLE_URL")); a.url == "" {
+			kept, _ := readLogin(path) // what cannot be read is about to be replaced
+			if a.url = first(a.url, os.Getenv("FETTLE_URL"), kept.URL); a.url == "" {
 				return usage("no server is named").WithNext("fettle login --url http://HOST:PORT")
 			}
 			if a.token = os.Getenv("FETTLE_TOKEN"); a.token == "" {

@@ -2,6 +2,7 @@ package main
 
 import (
 	"fmt"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -24,7 +25,7 @@ func (o *operator) personCommand() *cobra.Command {
 				if err != nil {
 					return err
 				}
-				_, err = fmt.Fprintf(o.out, "%s %v\nnext: fettled token new %s\n", p.Handle, p.Roles, p.Handle)
+				_, err = fmt.Fprintf(o.out, "added %s: %s\nnext: fettled token new %s\n", p.Handle, may(p.Roles), p.Handle)
 				return err
 			})
 		},
@@ -33,6 +34,18 @@ func (o *operator) personCommand() *cobra.Command {
 	cmd := noun("person", "The people who work here", add)
 	o.use(cmd, "database", "fetch-postgres")
 	return cmd
+}
+
+// may says what somebody with some roles may do.
+func may(roles []tasks.Role) string {
+	if len(roles) == 0 {
+		return "may read"
+	}
+	words := make([]string, len(roles))
+	for i, r := range roles {
+		words[i] = string(r)
+	}
+	return strings.Join(words, ", ")
 }
 
 func (o *operator) tokenCommand() *cobra.Command {
