@@ -3,6 +3,7 @@ package cli
 import (
 	"bufio"
 	"context"
+	"errors"
 	"fmt"
 	"io"
 	"os"
@@ -50,7 +51,7 @@ func (a *app) agreed(c *correction, question string) error {
 		return err
 	}
 	if w := strings.ToLower(strings.TrimSpace(answer)); w != "y" && w != "yes" {
-		return usage("not posted").WithNext("repeat the command and answer y")
+		return errors.New("not posted")
 	}
 	return nil
 }

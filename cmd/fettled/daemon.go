@@ -92,20 +92,22 @@ const grace = 10 * time.Second
 
 // Run serves the API, works in the background, or both, until ctx ends; then it lets requests and jobs finish.
 // started is told the address once requests are answered.
-func (d *Daemon) Run(ctx context.Context, serve, work bool, started func(address string)) (err error) {
+func (d *Daemon) Run(ctx context.Context, serve, work bool, started func(address string)) error {
+	stop := func() error { return nil }
 	if work {
-		stop, err := d.startWorker(ctx)
-		if err != nil {
+		var err error
+		if stop, err = d.startWorker(ctx); err != nil {
 			return err
 		}
-		defer func() { err = errors.Join(err, stop()) }()
 	}
-	if !serve {
+	var err error
+	if serve {
+		err = d.serve(ctx, started)
+	} else {
 		started("")
 		<-ctx.Done()
-		return nil
 	}
-	return d.serve(ctx, started)
+	return errors.Join(err, stop())
 }
 
 func (d *Daemon) startWorker(ctx context.Context) (stop func() error, err error) {
