@@ -126,10 +126,11 @@ func (d *day) followed() {
 	d.Fatal("the tasks did not follow the ledger")
 }
 
-// serve starts the daemon; the function it returns asks it to stop and wants a good end.
-func (d *day) serve(args ...string) (address string, stop func()) {
+// start runs a daemon until the function it returns is called, which asks it to stop and wants a good end. What it
+// says first begins with some words; the rest of that line is returned.
+func (d *day) start(words string, args ...string) (rest string, stop func()) {
 	d.Helper()
-	cmd := exec.Command(d.fettled, append([]string{"serve", "--listen", "127.0.0.1:0"}, args...)...)
+	cmd := exec.Command(d.fettled, args...)
 	cmd.Env = d.env
 	cmd.Stderr = d.Output()
 	out, err := cmd.StdoutPipe()
@@ -147,15 +148,15 @@ func (d *day) serve(args ...string) (address string, stop func()) {
 		}
 	})
 	line, err := bufio.NewReader(out).ReadString('\n')
-	address, ok := strings.CutPrefix(strings.TrimSpace(line), "listening on ")
+	rest, ok := strings.CutPrefix(strings.TrimSpace(line), words)
 	if !ok {
-		d.Fatalf("fettled serve: %q, %v", line, err)
+		d.Fatalf("fettled %s: %q, %v", strings.Join(args, " "), line, err)
 	}
-	return address, func() {
+	return rest, func() {
 		d.Helper()
 		ended = true
 		if err := errors.Join(cmd.Process.Signal(syscall.SIGTERM), cmd.Wait()); err != nil {
-			d.Errorf("fettled serve did not end well: %v", err)
+			d.Errorf("fettled %s did not end well: %v", args[0], err)
 		}
 	}
 }
@@ -173,7 +174,8 @@ func TestADay(t *testing.T) {
 	d.says(d.operate("import", "../../testdata/deliveries/tiny"), "22 supervoxels", "1 base segment is not held together", "4 new tasks")
 	d.operate("person", "add", "rowan", "--role", "lead")
 	d.tokens["rowan"] = strings.TrimSpace(d.operate("token", "new", "rowan"))
-	address, stop := d.serve()
+	address, stop := d.start("listening on ", "serve", "--no-worker", "--listen", "127.0.0.1:0")
+	_, stopWorker := d.start("working", "work")
 	d.env = append(d.env, "FETTLE_URL="+address)
 
 	d.team()
@@ -185,6 +187,7 @@ func TestADay(t *testing.T) {
 	d.refused(5, "alder", "throughput", "--person", "birch")
 	d.says(d.operate("reconcile", "tiny"), "at position 4: 4 entries, 22 supervoxels", "clean: no difference")
 	stop()
+	stopWorker()
 	d.says(d.refused(6, "rowan", "queue"), "no answer from "+address)
 }
 

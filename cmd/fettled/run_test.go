@@ -1,8 +1,10 @@
 package main
 
 import (
+	"bufio"
 	"bytes"
 	"context"
+	"io"
 	"os"
 	"path/filepath"
 	"strings"
@@ -92,6 +94,32 @@ func TestWrongUsageIsExitCodeTwo(t *testing.T) {
 		if code != exitUsage || !strings.Contains(errs, "next: ") {
 			t.Errorf("%v: exit code %d, want %d\n%s", args, code, exitUsage, errs)
 		}
+	}
+}
+
+// A person is added while the server runs on the same private PostgreSQL, and is there at the next start.
+func TestOperatorsWorkBesideTheServer(t *testing.T) {
+	t.Parallel()
+	data := filepath.Join(folder(t), "data")
+	ctx, stop := context.WithCancel(t.Context())
+	said, out := io.Pipe()
+	ended := make(chan int)
+	go func() {
+		ended <- run(ctx, []string{"serve", "--data", data, "--listen", "127.0.0.1:0"}, strings.NewReader(""), out, t.Output())
+		out.Close()
+	}()
+	if line, err := bufio.NewReader(said).ReadString('\n'); !strings.HasPrefix(line, "listening on http://127.0.0.1:") {
+		t.Fatalf("%q, %v", line, err)
+	}
+	if code, out, errs := invoke(t.Context(), "person", "add", "rowan", "--role", "lead", "--data", data); code != exitOK || out != "added rowan: lead\nnext: fettled token new rowan\n" {
+		t.Errorf("exit code %d\n%s%s", code, out, errs)
+	}
+	stop()
+	if code := <-ended; code != exitOK {
+		t.Errorf("the server ended with %d", code)
+	}
+	if code, out, errs := invoke(t.Context(), "token", "new", "rowan", "--data", data); code != exitOK || !strings.HasPrefix(out, "fettle_") {
+		t.Errorf("exit code %d\n%s%s", code, out, errs)
 	}
 }
 

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"context"
 	"fmt"
 
 	"github.com/spf13/cobra"
@@ -15,12 +16,23 @@ func (o *operator) serveCommand() *cobra.Command {
 			return o.with(cmd.Context(), func(d *Daemon) error {
 				return d.Run(cmd.Context(), true, !o.config.NoWorker, func(address string) {
 					fmt.Fprintf(o.out, "listening on http://%s\n", address)
+					o.hint(cmd.Context(), d)
 				})
 			})
 		},
 	}
 	o.use(cmd, "database", "fetch-postgres", "listen", "no-worker")
 	return cmd
+}
+
+// hint says what an empty house still needs.
+func (o *operator) hint(ctx context.Context, d *Daemon) {
+	if people, err := d.People.List(ctx); err == nil && len(people) == 0 {
+		fmt.Fprintln(o.err, "next: nobody can sign in yet: fettled person add HANDLE --role lead, then fettled token new HANDLE")
+	}
+	if volumes, err := d.Ledger.Volumes(ctx); err == nil && len(volumes) == 0 {
+		fmt.Fprintln(o.err, "next: there is no volume yet: fettled import DIR")
+	}
 }
 
 func (o *operator) workCommand() *cobra.Command {
