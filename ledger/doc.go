@@ -15,7 +15,9 @@
 // # How it is read
 //
 // [Ledger] opens volumes. [Volume] is one of them: read.go and history.go answer questions at any position,
-// plan.go turns a [Draft] into the exact change it would make, post.go appends it, state.go holds who is where.
+// plan.go, split.go and reverse.go turn a [Draft] into the exact change it would make, post.go and write.go append it,
+// state.go holds who is where, catchup.go brings it up to what other processes posted, and reconcile.go, replay.go and
+// tables.go hold the tables against base and entries.
 // Costs: an edit costs by its smaller side; memory is about 13 bytes a supervoxel for the base's index and
 // some 100 bytes a piece for the edits.
 //
