@@ -70,13 +70,13 @@ func (p *progress) line(done, total int64, unit string, now time.Time) string {
 	full := int(share * cells)
 	bar := strings.Repeat("█", full) + strings.Repeat("░", cells-full)
 	if !p.terminal {
-		return strings.TrimRight(fmt.Sprintf("%s  %d of %d %s", p.stage, done, total, unit), " ")
+		return fmt.Sprintf("%s  %d of %d %s", p.stage, done, total, unit)
 	}
 	left := ""
 	if took := now.Sub(p.began); share > 0 && share < 1 && took > 2*time.Second {
 		left = fmt.Sprintf("  %s left", time.Duration(float64(took)*(1-share)/share).Round(time.Second))
 	}
-	return fmt.Sprintf("%-12s %s %3.0f %%  %d of %d %s%s", p.stage, bar, 100*share, done, total, unit, left)
+	return fmt.Sprintf("%-19s %s %3.0f %%  %d of %d %s%s", p.stage, bar, 100*share, done, total, unit, left)
 }
 
 // end finishes the line of a terminal.

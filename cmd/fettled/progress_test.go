@@ -25,8 +25,8 @@ func TestProgressOnATerminalIsOneLineRedrawn(t *testing.T) {
 	p.step("sort", 0, 4, "rows")
 	p.step("sort", 4, 4, "rows")
 	p.end()
-	want := "\r\x1b[Ksort         ░░░░░░░░░░░░░░░░░░░░░░░░   0 %  0 of 4 rows" +
-		"\r\x1b[Ksort         ████████████████████████ 100 %  4 of 4 rows\n"
+	want := "\r\x1b[Ksort                ░░░░░░░░░░░░░░░░░░░░░░░░   0 %  0 of 4 rows" +
+		"\r\x1b[Ksort                ████████████████████████ 100 %  4 of 4 rows\n"
 	if b.String() != want {
 		t.Errorf("got %q", b.String())
 	}

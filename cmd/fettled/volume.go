@@ -44,7 +44,9 @@ judge it and make the tasks. A delivery with errors is refused whole, with the p
 func (o *operator) importDelivery(ctx context.Context, d *Daemon, dir, name string) (*base.Report, error) {
 	p := newProgress(o.err)
 	report, err := base.Import(ctx, d.Pool, dir, base.ImportOptions{Name: name, Progress: func(s base.Progress) {
-		p.step(s.Stage, s.Done, s.Total, s.Unit)
+		if s.Unit != "" { // the last word, "done", measures nothing
+			p.step(s.Stage, s.Done, s.Total, s.Unit)
+		}
 	}})
 	p.end()
 	var refusal *base.Refusal
