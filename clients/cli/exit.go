@@ -80,12 +80,12 @@ func complain(w io.Writer, err error, server string) {
 		what = fmt.Sprintf("no answer from %s: %s", server, cause(err))
 		next = "check the address with fettle whoami, and that the server runs; then repeat the command"
 	}
-	fmt.Fprintf(w, "fettle: %s\n", what)
+	fmt.Fprintf(w, "fettle: %s\n", clean(what))
 	if known {
 		explain(w, f.Data)
 	}
 	if next != "" {
-		fmt.Fprintf(w, "next: %s\n", next)
+		fmt.Fprintf(w, "next: %s\n", clean(next))
 	}
 }
 

@@ -10,6 +10,7 @@ import (
 	"strconv"
 	"strings"
 	"time"
+	"unicode"
 
 	"charm.land/lipgloss/v2"
 	"golang.org/x/term"
@@ -90,7 +91,7 @@ func (a *app) lines(w io.Writer, fields []field) error {
 			continue
 		}
 		name := f.name + strings.Repeat(" ", wide-len(f.name))
-		if _, err := lipgloss.Fprintf(w, "%s  %s\n", lipgloss.NewStyle().Faint(true).Render(name), f.value); err != nil {
+		if _, err := lipgloss.Fprintf(w, "%s  %s\n", lipgloss.NewStyle().Faint(true).Render(name), clean(f.value)); err != nil {
 			return err
 		}
 	}
@@ -123,17 +124,33 @@ func underscored(head []string) []string {
 
 // writeTabs writes lines for cut, sort and awk: a tab between values, none inside.
 func writeTabs(w io.Writer, head []string, rows [][]string) error {
-	plain := strings.NewReplacer("\t", " ", "\n", " ", "\r", "")
-	for _, row := range append([][]string{head}, rows...) {
-		cells := make([]string, len(row))
-		for i, cell := range row {
-			cells[i] = plain.Replace(cell)
-		}
-		if _, err := fmt.Fprintln(w, strings.Join(cells, "\t")); err != nil {
+	for _, row := range append([][]string{head}, cleaned(rows)...) {
+		if _, err := fmt.Fprintln(w, strings.Join(row, "\t")); err != nil {
 			return err
 		}
 	}
 	return nil
+}
+
+// clean makes a space of every control character: a note that somebody else wrote must not move our cursor, colour
+// our screen or break a line.
+func clean(s string) string {
+	return strings.Map(func(r rune) rune {
+		if unicode.IsControl(r) {
+			return ' '
+		}
+		return r
+	}, s)
+}
+
+func cleaned(rows [][]string) [][]string {
+	out := make([][]string, len(rows))
+	for i, row := range rows {
+		for _, cell := range row {
+			out[i] = append(out[i], clean(cell))
+		}
+	}
+	return out
 }
 
 // terminal says whether a person is looking at standard output.

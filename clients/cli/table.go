@@ -21,6 +21,7 @@ func drawTable(w io.Writer, width int, head []string, alignRight []bool, rows []
 		_, err := fmt.Fprintln(w, "none")
 		return err
 	}
+	rows = cleaned(rows)
 	short := make([]string, len(head))
 	for i, h := range head {
 		short[i] = first(abbreviated[h], h)

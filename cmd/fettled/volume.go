@@ -6,7 +6,10 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"strconv"
+	"strings"
 	"text/tabwriter"
+	"unicode"
 
 	"github.com/spf13/cobra"
 
@@ -69,12 +72,20 @@ func printRefusal(w io.Writer, r *base.Refusal) {
 		if p.Line > 0 {
 			line = fmt.Sprint(p.Line)
 		}
-		fmt.Fprintf(t, "%s\t%s\t%s\t%s\t%s\n", p.Table, line, p.Column, p.Value, p.Reason)
+		fmt.Fprintf(t, "%s\t%s\t%s\t%s\t%s\n", p.Table, line, p.Column, shown(p.Value), p.Reason)
 	}
 	t.Flush()
 	if r.More > 0 {
 		fmt.Fprintf(w, "and %d more\n", r.More)
 	}
+}
+
+// shown is a value as it stands in a table, quoted when it holds what a terminal would act on.
+func shown(value string) string {
+	if strings.ContainsFunc(value, unicode.IsControl) {
+		return strconv.Quote(value)
+	}
+	return value
 }
 
 func printReport(w io.Writer, r *base.Report) {
