@@ -88,9 +88,9 @@ func (d *desk) refused(err error, kind fault.Kind, code string) *fault.Error {
 
 func TestStaleIDsAreAnsweredWithTheCurrentOnes(t *testing.T) {
 	d := newDesk(t)
-	late := d.merge(d.ids[0], d.ids[2])
+	late := d.merge(d.ids[2], d.ids[0])
 	first := d.post(d.merge(d.ids[0], d.ids[1]))
-	second := d.post(d.merge(d.ids[0], d.ids[3]))
+	second := d.post(d.merge(d.ids[2], d.ids[3]))
 	_, err := d.volume.Post(t.Context(), late)
 	f := d.refused(err, fault.Retired, "segment-retired")
 	current := f.Data["current"].([]ledger.ID)

@@ -1,8 +1,10 @@
 package ledger
 
 import (
+	"cmp"
 	"context"
 	"errors"
+	"slices"
 
 	"fettle.example/fettle/internal/fault"
 )
@@ -49,6 +51,7 @@ func (v *Volume) explain(ctx context.Context, err error) error {
 			}
 		}
 	}
+	slices.SortFunc(changes, func(a, b Change) int { return cmp.Compare(a.Position, b.Position) })
 	f := fault.Newf(fault.Retired, "segment-retired", "the segments you saw (%s) have changed since", list(stale.saw)).
 		WithNext("look at the current segments and the entries between, then ask again").
 		WithData("current", unique(current)).WithData("entries", changes)
