@@ -47,7 +47,7 @@ func TestTriageFillsTheQueue(t *testing.T) {
 		t.Fatalf("made %d: %v", made, err)
 	}
 	task := f.take(alder)
-	task, e := f.corrects(alder, task, proposed(task))
+	_, e := f.corrects(alder, task, proposed(task))
 	if _, err := triage.Follow(t.Context(), f.v); err != nil {
 		t.Fatal(err)
 	}
