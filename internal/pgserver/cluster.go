@@ -4,14 +4,11 @@ import (
 	"bytes"
 	"context"
 	"fmt"
-	"io"
 	"os"
 	"os/exec"
 	"os/user"
 	"path/filepath"
 	"strconv"
-	"strings"
-	"sync"
 	"syscall"
 
 	"fettle.example/fettle/internal/fault"
@@ -41,11 +38,25 @@ func runAs() (*syscall.Credential, error) {
 		WithNext("run this as an ordinary user")
 }
 
+// settings are written once, for the operator to change. Most are for solid-state disks and many short transactions.
+const settings = `
+# Set by fettle when it made this folder; change them as you like.
+max_connections = 200
+shared_buffers = 256MB
+max_wal_size = 2GB
+checkpoint_timeout = 15min
+wal_compression = on
+random_page_cost = 1.1
+jit = off
+timezone = 'UTC'
+log_timezone = 'UTC'
+`
+
 // initialise makes the data folder when there is none. It is made beside its place and then renamed, so that a crash
 // leaves no half of one.
-func initialise(ctx context.Context, bin, data string, who *syscall.Credential) error {
-	if version, err := os.ReadFile(filepath.Join(data, "PG_VERSION")); err == nil {
-		return sameMajor(ctx, bin, data, strings.TrimSpace(string(version)))
+func initialise(ctx context.Context, bin, data string, who *syscall.Credential, scratch bool) error {
+	if _, err := os.Stat(filepath.Join(data, "PG_VERSION")); err == nil {
+		return nil
 	}
 	fresh := data + ".new"
 	if err := os.RemoveAll(fresh); err != nil {
@@ -62,17 +73,49 @@ func initialise(ctx context.Context, bin, data string, who *syscall.Credential) 
 			return err
 		}
 	}
-	cmd := exec.CommandContext(ctx, filepath.Join(bin, "initdb"), "-D", fresh, "-U", "postgres", "--auth=trust",
-		"--encoding=UTF8", "--locale=C.UTF-8", "--data-checksums", "--no-sync")
+	args := []string{"-D", fresh, "-U", "postgres", "--auth=trust", "--encoding=UTF8", "--locale=C", "--data-checksums"}
+	if scratch {
+		args = append(args, "--no-sync")
+	}
+	cmd := exec.CommandContext(ctx, filepath.Join(bin, "initdb"), args...)
 	cmd.Dir = fresh
-	cmd.SysProcAttr = attributes(who)
+	cmd.SysProcAttr = &syscall.SysProcAttr{Credential: who}
 	if out, err := cmd.CombinedOutput(); err != nil {
 		return fmt.Errorf("initdb: %w: %s", err, bytes.TrimSpace(out))
+	}
+	if err := appendTo(filepath.Join(fresh, "postgresql.conf"), settings); err != nil {
+		return err
 	}
 	return os.Rename(fresh, data)
 }
 
-// reachable lets the server's user walk to its folder; it does not let it list the folders on the way.
+func appendTo(path, text string) error {
+	f, err := os.OpenFile(path, os.O_WRONLY|os.O_APPEND, 0)
+	if err != nil {
+		return err
+	}
+	if _, err := f.WriteString(text); err != nil {
+		f.Close()
+		return err
+	}
+	return f.Close()
+}
+
+// makeFolder makes a folder that the server's user can walk through, whatever the umask.
+func makeFolder(dir string) error {
+	if _, err := os.Stat(dir); err == nil {
+		return nil
+	}
+	if err := makeFolder(filepath.Dir(dir)); err != nil {
+		return err
+	}
+	if err := os.Mkdir(dir, 0o755); err != nil {
+		return err
+	}
+	return os.Chmod(dir, 0o755)
+}
+
+// reachable refuses a folder that the server's user can't walk to. It opens none: that is for the owner to decide.
 func reachable(dir string) error {
 	for ; dir != string(filepath.Separator); dir = filepath.Dir(dir) {
 		info, err := os.Stat(dir)
@@ -87,113 +130,35 @@ func reachable(dir string) error {
 	return nil
 }
 
-// sameMajor refuses programs that cannot read the data.
-func sameMajor(ctx context.Context, bin, data, major string) error {
-	out, err := exec.CommandContext(ctx, filepath.Join(bin, "postgres"), "--version").Output()
-	if err != nil {
-		return fmt.Errorf("postgres --version: %w", err)
-	}
-	fields := strings.Fields(string(out)) // postgres (PostgreSQL) 15.18 ...
-	if len(fields) < 3 || strings.SplitN(fields[2], ".", 2)[0] != major {
-		return fault.Newf(fault.Conflict, "postgres-version", "%s was made by PostgreSQL %s, and the programs are %s", data, major, bytes.TrimSpace(out)).
-			WithNext("install PostgreSQL " + major + ", or move the data with pg_dump")
-	}
-	return nil
-}
-
 // socketPathMost is how long a socket's path may be, with a little room: the kernel takes 107 bytes, macOS 103.
 const socketPathMost = 95
 
-// socketDir makes the folder of the socket: in the server's own folder, or in /tmp when that path is too long.
+// socketDir makes the folder of the socket, for the server's user alone: "socket" in our own folder. When that path is
+// too long, the folder is in /tmp, and "socket" is a link to it, by which the next start finds what a crash left.
 func socketDir(dir string, who *syscall.Credential) (string, error) {
 	socket := filepath.Join(dir, "socket")
-	if err := os.MkdirAll(socket, 0o700); err != nil {
+	if left, err := os.Readlink(socket); err == nil {
+		if err := os.RemoveAll(left); err != nil {
+			return "", err
+		}
+	}
+	if err := os.RemoveAll(socket); err != nil {
 		return "", err
 	}
 	if len(filepath.Join(socket, ".s.PGSQL.5432")) > socketPathMost {
-		var err error
-		if socket, err = os.MkdirTemp("/tmp", "fettle-pg-"); err != nil {
+		short, err := os.MkdirTemp("/tmp", "fettle-pg-")
+		if err != nil {
 			return "", err
 		}
-	}
-	if who != nil {
-		if err := os.Chown(socket, int(who.Uid), int(who.Gid)); err != nil {
+		if err := os.Symlink(short, socket); err != nil {
 			return "", err
 		}
+		socket = short
+	} else if err := os.Mkdir(socket, 0o700); err != nil {
+		return "", err
 	}
-	return socket, nil
-}
-
-// programs finds the folder with initdb and postgres: on the path, then in the usual places, newest first, then fetched.
-func programs(ctx context.Context, dir string, fetch bool) (string, error) {
-	if path, err := exec.LookPath("initdb"); err == nil {
-		if real, err := filepath.EvalSymlinks(path); err == nil {
-			return filepath.Dir(real), nil
-		}
+	if who == nil {
+		return socket, nil
 	}
-	var found []string
-	for _, pattern := range []string{"/usr/lib/postgresql/*/bin", "/usr/pgsql-*/bin", "/opt/homebrew/opt/postgresql@*/bin", "/usr/local/opt/postgresql@*/bin",
-		"/Applications/Postgres.app/Contents/Versions/*/bin"} {
-		matches, _ := filepath.Glob(pattern)
-		for _, m := range matches {
-			if _, err := os.Stat(filepath.Join(m, "initdb")); err == nil {
-				found = append(found, m)
-			}
-		}
-	}
-	if len(found) > 0 {
-		return newest(found), nil
-	}
-	if fetch {
-		return fetched(ctx, filepath.Join(dir, "programs"))
-	}
-	return "", fault.New(fault.NotFound, "postgres-missing", "this machine has no PostgreSQL programs").
-		WithNext("on Debian: apt-get install postgresql; or start with --fetch-postgres; or give --database an address")
-}
-
-// newest picks the folder with the highest version number in its path.
-func newest(dirs []string) string {
-	version := func(p string) (n int) {
-		for _, part := range strings.FieldsFunc(p, func(r rune) bool { return r < '0' || r > '9' }) {
-			if v, err := strconv.Atoi(part); err == nil {
-				n = max(n, v)
-			}
-		}
-		return n
-	}
-	best := dirs[0]
-	for _, d := range dirs[1:] {
-		if version(d) > version(best) {
-			best = d
-		}
-	}
-	return best
-}
-
-// lastLines keeps the end of what the server said, for the message when it stops at once.
-type lastLines struct {
-	mu   sync.Mutex
-	kept []byte
-	also io.Writer
-}
-
-const keptBytes = 600
-
-func (l *lastLines) Write(p []byte) (int, error) {
-	l.mu.Lock()
-	defer l.mu.Unlock()
-	l.kept = append(l.kept, p...)
-	if n := len(l.kept); n > keptBytes {
-		l.kept = l.kept[n-keptBytes:]
-	}
-	if l.also != nil {
-		return l.also.Write(p)
-	}
-	return len(p), nil
-}
-
-func (l *lastLines) String() string {
-	l.mu.Lock()
-	defer l.mu.Unlock()
-	return strings.Join(strings.Fields(string(l.kept)), " ")
+	return socket, os.Chown(socket, int(who.Uid), int(who.Gid))
 }

