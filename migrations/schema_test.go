@@ -4,7 +4,7 @@ import (
 	"bytes"
 	"flag"
 	"os"
-	"os/exec"
+	osexec "os/exec"
 	"path/filepath"
 	"regexp"
 	"testing"
@@ -17,7 +17,7 @@ var update = flag.Bool("update", false, "rewrite schema.sql")
 // TestSchemaIsTheOneToReview dumps a migrated database and holds it against schema.sql, so that a change of the tables shows as a
 // change of one file that a reviewer can read from top to bottom.
 func TestSchemaIsTheOneToReview(t *testing.T) {
-	cmd := exec.Command(dumper(t), "--schema-only", "--no-owner", "--no-privileges", "--schema=public", "--dbname="+pgtest.URL(t))
+	cmd := osexec.Command(dumper(t), "--schema-only", "--no-owner", "--no-privileges", "--schema=public", "--dbname="+pgtest.URL(t))
 	var said bytes.Buffer
 	cmd.Stderr = &said
 	out, err := cmd.Output()
@@ -42,7 +42,7 @@ func TestSchemaIsTheOneToReview(t *testing.T) {
 // dumper finds pg_dump: on the path, else beside the server's programs.
 func dumper(t *testing.T) string {
 	t.Helper()
-	if path, err := exec.LookPath("pg_dump"); err == nil {
+	if path, err := osexec.LookPath("pg_dump"); err == nil {
 		return path
 	}
 	found, _ := filepath.Glob("/usr/lib/postgresql/*/bin/pg_dump")
