@@ -23,6 +23,7 @@ func TestADay(t *testing.T) {
 	h.correcting()
 	h.working()
 	h.leading()
+	h.proving()
 	for path, item := range h.doc.Paths.Map() {
 		for method, op := range item.Operations() {
 			if !h.seen[op.OperationID] {

@@ -10,6 +10,7 @@ import (
 	"encoding/base64"
 	"encoding/json"
 	"fmt"
+	"io"
 	"net/http"
 	"net/url"
 	"path"
@@ -231,6 +232,27 @@ type Best struct {
 	Count  int       `json:"count"`
 	Family *string   `json:"family,omitempty"`
 	Kind   *TaskKind `json:"kind,omitempty"`
+}
+
+// Checkpoint defines model for Checkpoint.
+type Checkpoint struct {
+	MadeAt time.Time `json:"made_at"`
+
+	// Note the signed checkpoint (C2SP tlog-checkpoint): what an auditor keeps
+	Note   string `json:"note"`
+	Origin string `json:"origin"`
+
+	// Root RFC 6962 tree head, hex
+	Root string `json:"root"`
+
+	// Size entries it covers
+	Size int64 `json:"size"`
+}
+
+// CheckpointKey defines model for CheckpointKey.
+type CheckpointKey struct {
+	// Key C2SP verifier key: name+hash+base64
+	Key string `json:"key"`
 }
 
 // Claim defines model for Claim.
@@ -581,6 +603,16 @@ type Problem struct {
 	Title                string                 `json:"title"`
 	Type                 string                 `json:"type"`
 	AdditionalProperties map[string]interface{} `json:"-"`
+}
+
+// Proof defines model for Proof.
+type Proof struct {
+	// Path hashes from the leaves upward, hex
+	Path []string `json:"path"`
+
+	// Root hex
+	Root string `json:"root"`
+	Size int64  `json:"size"`
 }
 
 // Proposal defines model for Proposal.
@@ -944,6 +976,9 @@ type SegmentID = ID
 // TaskNumber defines model for taskNumber.
 type TaskNumber = int64
 
+// TreeSize defines model for treeSize.
+type TreeSize = int64
+
 // VolumeName defines model for volumeName.
 type VolumeName = string
 
@@ -1009,6 +1044,23 @@ type ListNeuronsParams struct {
 type GetNeuronParams struct {
 	// At a position, or an RFC 3339 time
 	At *AsOf `form:"at,omitempty" json:"at,omitempty"`
+}
+
+// ProveConsistencyParams defines parameters for ProveConsistency.
+type ProveConsistencyParams struct {
+	// Older size of the older tree
+	Older int64 `form:"older" json:"older"`
+
+	// Size entries in the tree; all, when absent
+	Size *TreeSize `form:"size,omitempty" json:"size,omitempty"`
+}
+
+// ProveInclusionParams defines parameters for ProveInclusion.
+type ProveInclusionParams struct {
+	Position int64 `form:"position" json:"position"`
+
+	// Size entries in the tree; all, when absent
+	Size *TreeSize `form:"size,omitempty" json:"size,omitempty"`
 }
 
 // GetQualityParams defines parameters for GetQuality.
@@ -1327,6 +1379,15 @@ type ServerInterface interface {
 	// WithdrawTasks Let anybody have tasks that were given to a person
 	// (POST /v1/volumes/{volume}/assignments/withdraw)
 	WithdrawTasks(ctx echo.Context, volume VolumeName) error
+	// GetCheckpoint The newest signed checkpoint of the ledger
+	// (GET /v1/volumes/{volume}/checkpoint)
+	GetCheckpoint(ctx echo.Context, volume VolumeName) error
+	// MakeCheckpoint Sign all entries that there are now
+	// (POST /v1/volumes/{volume}/checkpoint)
+	MakeCheckpoint(ctx echo.Context, volume VolumeName) error
+	// GetCheckpointKey The public key that checkpoints are checked with
+	// (GET /v1/volumes/{volume}/checkpoint/key)
+	GetCheckpointKey(ctx echo.Context, volume VolumeName) error
 	// ListClaims What you hold
 	// (GET /v1/volumes/{volume}/claims)
 	ListClaims(ctx echo.Context, volume VolumeName) error
@@ -1348,6 +1409,9 @@ type ServerInterface interface {
 	// GetEntry One entry, with the bytes that were hashed
 	// (GET /v1/volumes/{volume}/entries/{position})
 	GetEntry(ctx echo.Context, volume VolumeName, position int64) error
+	// ExportLedger The whole ledger as JSON Lines, which can be verified without this server
+	// (GET /v1/volumes/{volume}/export)
+	ExportLedger(ctx echo.Context, volume VolumeName) error
 	// ListFindings What looks suspicious now, most gain first
 	// (GET /v1/volumes/{volume}/findings)
 	ListFindings(ctx echo.Context, volume VolumeName, params ListFindingsParams) error
@@ -1375,6 +1439,12 @@ type ServerInterface interface {
 	// GetNeuronHistory The entries that changed the segment of a neuron's anchor, oldest first
 	// (GET /v1/volumes/{volume}/neurons/{name}/history)
 	GetNeuronHistory(ctx echo.Context, volume VolumeName, name NeuronName) error
+	// ProveConsistency Proof that the tree of a size goes on from an older one
+	// (GET /v1/volumes/{volume}/proofs/consistency)
+	ProveConsistency(ctx echo.Context, volume VolumeName, params ProveConsistencyParams) error
+	// ProveInclusion Proof that an entry is in the tree of a size; leaf number is position - 1
+	// (GET /v1/volumes/{volume}/proofs/inclusion)
+	ProveInclusion(ctx echo.Context, volume VolumeName, params ProveInclusionParams) error
 	// GetQuality How well the segments meet the delivered truth
 	// (GET /v1/volumes/{volume}/quality)
 	GetQuality(ctx echo.Context, volume VolumeName, params GetQualityParams) error
@@ -1586,6 +1656,54 @@ func (w *ServerInterfaceWrapper) WithdrawTasks(ctx echo.Context) error {
 
 	// Invoke the callback with all the unmarshaled arguments
 	err = w.Handler.WithdrawTasks(ctx, volume)
+	return err
+}
+
+// GetCheckpoint converts echo context to params.
+func (w *ServerInterfaceWrapper) GetCheckpoint(ctx echo.Context) error {
+	var err error
+	// ------------- Path parameter "volume" -------------
+	var volume VolumeName
+
+	err = runtime.BindStyledParameterWithOptions("simple", "volume", ctx.Param("volume"), &volume, runtime.BindStyledParameterOptions{ParamLocation: runtime.ParamLocationPath, Explode: false, Required: true, Type: "string", Format: "", ValueIsUnescaped: ctx.Request().URL.RawPath == ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter volume: %s", err))
+	}
+
+	// Invoke the callback with all the unmarshaled arguments
+	err = w.Handler.GetCheckpoint(ctx, volume)
+	return err
+}
+
+// MakeCheckpoint converts echo context to params.
+func (w *ServerInterfaceWrapper) MakeCheckpoint(ctx echo.Context) error {
+	var err error
+	// ------------- Path parameter "volume" -------------
+	var volume VolumeName
+
+	err = runtime.BindStyledParameterWithOptions("simple", "volume", ctx.Param("volume"), &volume, runtime.BindStyledParameterOptions{ParamLocation: runtime.ParamLocationPath, Explode: false, Required: true, Type: "string", Format: "", ValueIsUnescaped: ctx.Request().URL.RawPath == ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter volume: %s", err))
+	}
+
+	// Invoke the callback with all the unmarshaled arguments
+	err = w.Handler.MakeCheckpoint(ctx, volume)
+	return err
+}
+
+// GetCheckpointKey converts echo context to params.
+func (w *ServerInterfaceWrapper) GetCheckpointKey(ctx echo.Context) error {
+	var err error
+	// ------------- Path parameter "volume" -------------
+	var volume VolumeName
+
+	err = runtime.BindStyledParameterWithOptions("simple", "volume", ctx.Param("volume"), &volume, runtime.BindStyledParameterOptions{ParamLocation: runtime.ParamLocationPath, Explode: false, Required: true, Type: "string", Format: "", ValueIsUnescaped: ctx.Request().URL.RawPath == ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter volume: %s", err))
+	}
+
+	// Invoke the callback with all the unmarshaled arguments
+	err = w.Handler.GetCheckpointKey(ctx, volume)
 	return err
 }
 
@@ -1810,6 +1928,22 @@ func (w *ServerInterfaceWrapper) GetEntry(ctx echo.Context) error {
 
 	// Invoke the callback with all the unmarshaled arguments
 	err = w.Handler.GetEntry(ctx, volume, position)
+	return err
+}
+
+// ExportLedger converts echo context to params.
+func (w *ServerInterfaceWrapper) ExportLedger(ctx echo.Context) error {
+	var err error
+	// ------------- Path parameter "volume" -------------
+	var volume VolumeName
+
+	err = runtime.BindStyledParameterWithOptions("simple", "volume", ctx.Param("volume"), &volume, runtime.BindStyledParameterOptions{ParamLocation: runtime.ParamLocationPath, Explode: false, Required: true, Type: "string", Format: "", ValueIsUnescaped: ctx.Request().URL.RawPath == ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter volume: %s", err))
+	}
+
+	// Invoke the callback with all the unmarshaled arguments
+	err = w.Handler.ExportLedger(ctx, volume)
 	return err
 }
 
@@ -2084,6 +2218,70 @@ func (w *ServerInterfaceWrapper) GetNeuronHistory(ctx echo.Context) error {
 
 	// Invoke the callback with all the unmarshaled arguments
 	err = w.Handler.GetNeuronHistory(ctx, volume, name)
+	return err
+}
+
+// ProveConsistency converts echo context to params.
+func (w *ServerInterfaceWrapper) ProveConsistency(ctx echo.Context) error {
+	var err error
+	// ------------- Path parameter "volume" -------------
+	var volume VolumeName
+
+	err = runtime.BindStyledParameterWithOptions("simple", "volume", ctx.Param("volume"), &volume, runtime.BindStyledParameterOptions{ParamLocation: runtime.ParamLocationPath, Explode: false, Required: true, Type: "string", Format: "", ValueIsUnescaped: ctx.Request().URL.RawPath == ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter volume: %s", err))
+	}
+
+	// Parameter object where we will unmarshal all parameters from the context
+	var params ProveConsistencyParams
+	// ------------- Required query parameter "older" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, true, "older", ctx.QueryParams(), &params.Older, runtime.BindQueryParameterOptions{Type: "integer", Format: "int64"})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter older: %s", err))
+	}
+
+	// ------------- Optional query parameter "size" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "size", ctx.QueryParams(), &params.Size, runtime.BindQueryParameterOptions{Type: "integer", Format: "int64"})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter size: %s", err))
+	}
+
+	// Invoke the callback with all the unmarshaled arguments
+	err = w.Handler.ProveConsistency(ctx, volume, params)
+	return err
+}
+
+// ProveInclusion converts echo context to params.
+func (w *ServerInterfaceWrapper) ProveInclusion(ctx echo.Context) error {
+	var err error
+	// ------------- Path parameter "volume" -------------
+	var volume VolumeName
+
+	err = runtime.BindStyledParameterWithOptions("simple", "volume", ctx.Param("volume"), &volume, runtime.BindStyledParameterOptions{ParamLocation: runtime.ParamLocationPath, Explode: false, Required: true, Type: "string", Format: "", ValueIsUnescaped: ctx.Request().URL.RawPath == ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter volume: %s", err))
+	}
+
+	// Parameter object where we will unmarshal all parameters from the context
+	var params ProveInclusionParams
+	// ------------- Required query parameter "position" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, true, "position", ctx.QueryParams(), &params.Position, runtime.BindQueryParameterOptions{Type: "integer", Format: "int64"})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter position: %s", err))
+	}
+
+	// ------------- Optional query parameter "size" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "size", ctx.QueryParams(), &params.Size, runtime.BindQueryParameterOptions{Type: "integer", Format: "int64"})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter size: %s", err))
+	}
+
+	// Invoke the callback with all the unmarshaled arguments
+	err = w.Handler.ProveInclusion(ctx, volume, params)
 	return err
 }
 
@@ -2604,6 +2802,12 @@ func RegisterHandlersWithOptions(router EchoRouter, si ServerInterface, options 
 	router.POST(options.BaseURL+"/v1/volumes/:volume/reversals", wrapper.PostReversal, options.OperationMiddlewares["postReversal"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/entries", wrapper.ListEntries, options.OperationMiddlewares["listEntries"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/entries/:position", wrapper.GetEntry, options.OperationMiddlewares["getEntry"]...)
+	router.GET(options.BaseURL+"/v1/volumes/:volume/checkpoint", wrapper.GetCheckpoint, options.OperationMiddlewares["getCheckpoint"]...)
+	router.POST(options.BaseURL+"/v1/volumes/:volume/checkpoint", wrapper.MakeCheckpoint, options.OperationMiddlewares["makeCheckpoint"]...)
+	router.GET(options.BaseURL+"/v1/volumes/:volume/checkpoint/key", wrapper.GetCheckpointKey, options.OperationMiddlewares["getCheckpointKey"]...)
+	router.GET(options.BaseURL+"/v1/volumes/:volume/proofs/inclusion", wrapper.ProveInclusion, options.OperationMiddlewares["proveInclusion"]...)
+	router.GET(options.BaseURL+"/v1/volumes/:volume/proofs/consistency", wrapper.ProveConsistency, options.OperationMiddlewares["proveConsistency"]...)
+	router.GET(options.BaseURL+"/v1/volumes/:volume/export", wrapper.ExportLedger, options.OperationMiddlewares["exportLedger"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/neurons", wrapper.ListNeurons, options.OperationMiddlewares["listNeurons"]...)
 	router.POST(options.BaseURL+"/v1/volumes/:volume/neurons", wrapper.AddNeuron, options.OperationMiddlewares["addNeuron"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/neurons/:name", wrapper.GetNeuron, options.OperationMiddlewares["getNeuron"]...)
@@ -3097,6 +3301,123 @@ func (response WithdrawTasksdefaultApplicationProblemPlusJSONResponse) VisitWith
 	return err
 }
 
+type GetCheckpointRequestObject struct {
+	Volume VolumeName `json:"volume"`
+}
+
+type GetCheckpointResponseObject interface {
+	VisitGetCheckpointResponse(w http.ResponseWriter) error
+}
+
+type GetCheckpoint200JSONResponse Checkpoint
+
+func (response GetCheckpoint200JSONResponse) VisitGetCheckpointResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/json")
+	w.WriteHeader(200)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type GetCheckpointdefaultApplicationProblemPlusJSONResponse struct {
+	Body       Problem
+	StatusCode int
+}
+
+func (response GetCheckpointdefaultApplicationProblemPlusJSONResponse) VisitGetCheckpointResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/problem+json")
+	w.WriteHeader(response.StatusCode)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type MakeCheckpointRequestObject struct {
+	Volume VolumeName `json:"volume"`
+}
+
+type MakeCheckpointResponseObject interface {
+	VisitMakeCheckpointResponse(w http.ResponseWriter) error
+}
+
+type MakeCheckpoint200JSONResponse Checkpoint
+
+func (response MakeCheckpoint200JSONResponse) VisitMakeCheckpointResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/json")
+	w.WriteHeader(200)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type MakeCheckpointdefaultApplicationProblemPlusJSONResponse struct {
+	Body       Problem
+	StatusCode int
+}
+
+func (response MakeCheckpointdefaultApplicationProblemPlusJSONResponse) VisitMakeCheckpointResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/problem+json")
+	w.WriteHeader(response.StatusCode)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type GetCheckpointKeyRequestObject struct {
+	Volume VolumeName `json:"volume"`
+}
+
+type GetCheckpointKeyResponseObject interface {
+	VisitGetCheckpointKeyResponse(w http.ResponseWriter) error
+}
+
+type GetCheckpointKey200JSONResponse CheckpointKey
+
+func (response GetCheckpointKey200JSONResponse) VisitGetCheckpointKeyResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/json")
+	w.WriteHeader(200)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type GetCheckpointKeydefaultApplicationProblemPlusJSONResponse struct {
+	Body       Problem
+	StatusCode int
+}
+
+func (response GetCheckpointKeydefaultApplicationProblemPlusJSONResponse) VisitGetCheckpointKeyResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/problem+json")
+	w.WriteHeader(response.StatusCode)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
 type ListClaimsRequestObject struct {
 	Volume VolumeName `json:"volume"`
 }
@@ -3368,6 +3689,74 @@ type GetEntrydefaultApplicationProblemPlusJSONResponse struct {
 }
 
 func (response GetEntrydefaultApplicationProblemPlusJSONResponse) VisitGetEntryResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/problem+json")
+	w.WriteHeader(response.StatusCode)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type ExportLedgerRequestObject struct {
+	Volume VolumeName `json:"volume"`
+}
+
+type ExportLedgerResponseObject interface {
+	VisitExportLedgerResponse(w http.ResponseWriter) error
+}
+
+type ExportLedger200ApplicationjsonlResponse struct {
+	Body          io.Reader
+	ContentLength int64
+}
+
+func (response ExportLedger200ApplicationjsonlResponse) VisitExportLedgerResponse(w http.ResponseWriter) error {
+
+	w.Header().Set("Content-Type", "application/jsonl")
+	if response.ContentLength != 0 {
+		w.Header().Set("Content-Length", fmt.Sprint(response.ContentLength))
+	}
+	w.WriteHeader(200)
+
+	if closer, ok := response.Body.(io.ReadCloser); ok {
+		defer closer.Close()
+	}
+	flusher, ok := w.(http.Flusher)
+	if !ok {
+		// If w doesn't support flushing, fall back to io.Copy.
+		_, err := io.Copy(w, response.Body)
+		return err
+	}
+	// text/event-stream messages are typically small; use a
+	// modest buffer and flush after each chunk so clients see
+	// events immediately instead of waiting on OS buffering.
+	buf := make([]byte, 4096)
+	for {
+		n, err := response.Body.Read(buf)
+		if n > 0 {
+			if _, writeErr := w.Write(buf[:n]); writeErr != nil {
+				return writeErr
+			}
+			flusher.Flush()
+		}
+		if err != nil {
+			if err == io.EOF {
+				return nil
+			}
+			return err
+		}
+	}
+}
+
+type ExportLedgerdefaultApplicationProblemPlusJSONResponse struct {
+	Body       Problem
+	StatusCode int
+}
+
+func (response ExportLedgerdefaultApplicationProblemPlusJSONResponse) VisitExportLedgerResponse(w http.ResponseWriter) error {
 
 	var buf bytes.Buffer
 	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
@@ -3730,6 +4119,86 @@ type GetNeuronHistorydefaultApplicationProblemPlusJSONResponse struct {
 }
 
 func (response GetNeuronHistorydefaultApplicationProblemPlusJSONResponse) VisitGetNeuronHistoryResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/problem+json")
+	w.WriteHeader(response.StatusCode)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type ProveConsistencyRequestObject struct {
+	Volume VolumeName `json:"volume"`
+	Params ProveConsistencyParams
+}
+
+type ProveConsistencyResponseObject interface {
+	VisitProveConsistencyResponse(w http.ResponseWriter) error
+}
+
+type ProveConsistency200JSONResponse Proof
+
+func (response ProveConsistency200JSONResponse) VisitProveConsistencyResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/json")
+	w.WriteHeader(200)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type ProveConsistencydefaultApplicationProblemPlusJSONResponse struct {
+	Body       Problem
+	StatusCode int
+}
+
+func (response ProveConsistencydefaultApplicationProblemPlusJSONResponse) VisitProveConsistencyResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/problem+json")
+	w.WriteHeader(response.StatusCode)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type ProveInclusionRequestObject struct {
+	Volume VolumeName `json:"volume"`
+	Params ProveInclusionParams
+}
+
+type ProveInclusionResponseObject interface {
+	VisitProveInclusionResponse(w http.ResponseWriter) error
+}
+
+type ProveInclusion200JSONResponse Proof
+
+func (response ProveInclusion200JSONResponse) VisitProveInclusionResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/json")
+	w.WriteHeader(200)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type ProveInclusiondefaultApplicationProblemPlusJSONResponse struct {
+	Body       Problem
+	StatusCode int
+}
+
+func (response ProveInclusiondefaultApplicationProblemPlusJSONResponse) VisitProveInclusionResponse(w http.ResponseWriter) error {
 
 	var buf bytes.Buffer
 	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
@@ -4343,6 +4812,15 @@ type StrictServerInterface interface {
 	// WithdrawTasks Let anybody have tasks that were given to a person
 	// (POST /v1/volumes/{volume}/assignments/withdraw)
 	WithdrawTasks(ctx context.Context, request WithdrawTasksRequestObject) (WithdrawTasksResponseObject, error)
+	// GetCheckpoint The newest signed checkpoint of the ledger
+	// (GET /v1/volumes/{volume}/checkpoint)
+	GetCheckpoint(ctx context.Context, request GetCheckpointRequestObject) (GetCheckpointResponseObject, error)
+	// MakeCheckpoint Sign all entries that there are now
+	// (POST /v1/volumes/{volume}/checkpoint)
+	MakeCheckpoint(ctx context.Context, request MakeCheckpointRequestObject) (MakeCheckpointResponseObject, error)
+	// GetCheckpointKey The public key that checkpoints are checked with
+	// (GET /v1/volumes/{volume}/checkpoint/key)
+	GetCheckpointKey(ctx context.Context, request GetCheckpointKeyRequestObject) (GetCheckpointKeyResponseObject, error)
 	// ListClaims What you hold
 	// (GET /v1/volumes/{volume}/claims)
 	ListClaims(ctx context.Context, request ListClaimsRequestObject) (ListClaimsResponseObject, error)
@@ -4364,6 +4842,9 @@ type StrictServerInterface interface {
 	// GetEntry One entry, with the bytes that were hashed
 	// (GET /v1/volumes/{volume}/entries/{position})
 	GetEntry(ctx context.Context, request GetEntryRequestObject) (GetEntryResponseObject, error)
+	// ExportLedger The whole ledger as JSON Lines, which can be verified without this server
+	// (GET /v1/volumes/{volume}/export)
+	ExportLedger(ctx context.Context, request ExportLedgerRequestObject) (ExportLedgerResponseObject, error)
 	// ListFindings What looks suspicious now, most gain first
 	// (GET /v1/volumes/{volume}/findings)
 	ListFindings(ctx context.Context, request ListFindingsRequestObject) (ListFindingsResponseObject, error)
@@ -4391,6 +4872,12 @@ type StrictServerInterface interface {
 	// GetNeuronHistory The entries that changed the segment of a neuron's anchor, oldest first
 	// (GET /v1/volumes/{volume}/neurons/{name}/history)
 	GetNeuronHistory(ctx context.Context, request GetNeuronHistoryRequestObject) (GetNeuronHistoryResponseObject, error)
+	// ProveConsistency Proof that the tree of a size goes on from an older one
+	// (GET /v1/volumes/{volume}/proofs/consistency)
+	ProveConsistency(ctx context.Context, request ProveConsistencyRequestObject) (ProveConsistencyResponseObject, error)
+	// ProveInclusion Proof that an entry is in the tree of a size; leaf number is position - 1
+	// (GET /v1/volumes/{volume}/proofs/inclusion)
+	ProveInclusion(ctx context.Context, request ProveInclusionRequestObject) (ProveInclusionResponseObject, error)
 	// GetQuality How well the segments meet the delivered truth
 	// (GET /v1/volumes/{volume}/quality)
 	GetQuality(ctx context.Context, request GetQualityRequestObject) (GetQualityResponseObject, error)
@@ -4853,6 +5340,81 @@ func (sh *strictHandler) WithdrawTasks(ctx echo.Context, volume VolumeName) erro
 	return nil
 }
 
+// GetCheckpoint operation middleware
+func (sh *strictHandler) GetCheckpoint(ctx echo.Context, volume VolumeName) error {
+	var request GetCheckpointRequestObject
+
+	request.Volume = volume
+
+	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
+		return sh.ssi.GetCheckpoint(ctx.Request().Context(), request.(GetCheckpointRequestObject))
+	}
+	for _, middleware := range sh.middlewares {
+		handler = middleware(handler, "GetCheckpoint")
+	}
+
+	response, err := handler(ctx, request)
+
+	if err != nil {
+		return err
+	} else if validResponse, ok := response.(GetCheckpointResponseObject); ok {
+		return validResponse.VisitGetCheckpointResponse(ctx.Response())
+	} else if response != nil {
+		return fmt.Errorf("unexpected response type: %T", response)
+	}
+	return nil
+}
+
+// MakeCheckpoint operation middleware
+func (sh *strictHandler) MakeCheckpoint(ctx echo.Context, volume VolumeName) error {
+	var request MakeCheckpointRequestObject
+
+	request.Volume = volume
+
+	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
+		return sh.ssi.MakeCheckpoint(ctx.Request().Context(), request.(MakeCheckpointRequestObject))
+	}
+	for _, middleware := range sh.middlewares {
+		handler = middleware(handler, "MakeCheckpoint")
+	}
+
+	response, err := handler(ctx, request)
+
+	if err != nil {
+		return err
+	} else if validResponse, ok := response.(MakeCheckpointResponseObject); ok {
+		return validResponse.VisitMakeCheckpointResponse(ctx.Response())
+	} else if response != nil {
+		return fmt.Errorf("unexpected response type: %T", response)
+	}
+	return nil
+}
+
+// GetCheckpointKey operation middleware
+func (sh *strictHandler) GetCheckpointKey(ctx echo.Context, volume VolumeName) error {
+	var request GetCheckpointKeyRequestObject
+
+	request.Volume = volume
+
+	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
+		return sh.ssi.GetCheckpointKey(ctx.Request().Context(), request.(GetCheckpointKeyRequestObject))
+	}
+	for _, middleware := range sh.middlewares {
+		handler = middleware(handler, "GetCheckpointKey")
+	}
+
+	response, err := handler(ctx, request)
+
+	if err != nil {
+		return err
+	} else if validResponse, ok := response.(GetCheckpointKeyResponseObject); ok {
+		return validResponse.VisitGetCheckpointKeyResponse(ctx.Response())
+	} else if response != nil {
+		return fmt.Errorf("unexpected response type: %T", response)
+	}
+	return nil
+}
+
 // ListClaims operation middleware
 func (sh *strictHandler) ListClaims(ctx echo.Context, volume VolumeName) error {
 	var request ListClaimsRequestObject
@@ -5097,6 +5659,31 @@ func (sh *strictHandler) GetEntry(ctx echo.Context, volume VolumeName, position 
 		return err
 	} else if validResponse, ok := response.(GetEntryResponseObject); ok {
 		return validResponse.VisitGetEntryResponse(ctx.Response())
+	} else if response != nil {
+		return fmt.Errorf("unexpected response type: %T", response)
+	}
+	return nil
+}
+
+// ExportLedger operation middleware
+func (sh *strictHandler) ExportLedger(ctx echo.Context, volume VolumeName) error {
+	var request ExportLedgerRequestObject
+
+	request.Volume = volume
+
+	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
+		return sh.ssi.ExportLedger(ctx.Request().Context(), request.(ExportLedgerRequestObject))
+	}
+	for _, middleware := range sh.middlewares {
+		handler = middleware(handler, "ExportLedger")
+	}
+
+	response, err := handler(ctx, request)
+
+	if err != nil {
+		return err
+	} else if validResponse, ok := response.(ExportLedgerResponseObject); ok {
+		return validResponse.VisitExportLedgerResponse(ctx.Response())
 	} else if response != nil {
 		return fmt.Errorf("unexpected response type: %T", response)
 	}
@@ -5421,6 +6008,58 @@ func (sh *strictHandler) GetNeuronHistory(ctx echo.Context, volume VolumeName, n
 		return err
 	} else if validResponse, ok := response.(GetNeuronHistoryResponseObject); ok {
 		return validResponse.VisitGetNeuronHistoryResponse(ctx.Response())
+	} else if response != nil {
+		return fmt.Errorf("unexpected response type: %T", response)
+	}
+	return nil
+}
+
+// ProveConsistency operation middleware
+func (sh *strictHandler) ProveConsistency(ctx echo.Context, volume VolumeName, params ProveConsistencyParams) error {
+	var request ProveConsistencyRequestObject
+
+	request.Volume = volume
+	request.Params = params
+
+	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
+		return sh.ssi.ProveConsistency(ctx.Request().Context(), request.(ProveConsistencyRequestObject))
+	}
+	for _, middleware := range sh.middlewares {
+		handler = middleware(handler, "ProveConsistency")
+	}
+
+	response, err := handler(ctx, request)
+
+	if err != nil {
+		return err
+	} else if validResponse, ok := response.(ProveConsistencyResponseObject); ok {
+		return validResponse.VisitProveConsistencyResponse(ctx.Response())
+	} else if response != nil {
+		return fmt.Errorf("unexpected response type: %T", response)
+	}
+	return nil
+}
+
+// ProveInclusion operation middleware
+func (sh *strictHandler) ProveInclusion(ctx echo.Context, volume VolumeName, params ProveInclusionParams) error {
+	var request ProveInclusionRequestObject
+
+	request.Volume = volume
+	request.Params = params
+
+	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
+		return sh.ssi.ProveInclusion(ctx.Request().Context(), request.(ProveInclusionRequestObject))
+	}
+	for _, middleware := range sh.middlewares {
+		handler = middleware(handler, "ProveInclusion")
+	}
+
+	response, err := handler(ctx, request)
+
+	if err != nil {
+		return err
+	} else if validResponse, ok := response.(ProveInclusionResponseObject); ok {
+		return validResponse.VisitProveInclusionResponse(ctx.Response())
 	} else if response != nil {
 		return fmt.Errorf("unexpected response type: %T", response)
 	}
@@ -5888,123 +6527,133 @@ func (sh *strictHandler) GetThroughput(ctx echo.Context, volume VolumeName, para
 // const string: with thousands of chunks the chained `+` fold is several
 // times slower for the Go compiler than parsing a slice literal.
 var swaggerSpec = []string{
-	"3H1Zd9u21uhfwdI9d6Vdl4mdsY3zlGY4zWmb5iZu+9DkOJC4JaEmAQYArej483//FjYAjoBEWZST0ydb",
-	"EolhT9gzLiczkReCA9dqcnI5KaikOWiQ+ImqX+fmbwpqJlmhmeCTkwklhVDMfEiIkIRy8vblM3L//v3H",
-	"RLMcJsmEmcc+lSDXk2TCaQ7mLT1JJmq2hJyaIfW6MN8qLRlfTK6uksksoyx/9dz8iO8XVC/r1/HXSTKR",
-	"8KlkEtLJiZYlNEecC5lTPTmZlCVLJ0lgBpZCXggNfLb+Cdb9jT0lv/326nlCcpoCEXwGZC4kWS2pJkwR",
-	"LcgUSCo4EMpTcg6FJnopRblYErgAuSYSCqD6CWGaTGEmclBEL4GwlIg5/gdcy7WBmfmAO0qIEkSbGeh7",
-	"bt83c1GuViAhxZm40G7aBWX8DvmFronS5hfGyadSaFAJoXauVy9OX5JU0rkmS6oI03fec4+QJdAUZA3S",
-	"VzU4bht4bAJuTj//DHyhl5OT+98nk5zx6uOjEKg5lFLw1zhREJ/4Z+OM9RR3QzMUdAHPSqmErGboUNzM",
-	"/rqZ6swwP7Oc6dgoGf7YHCSFOS0zPTm5e3ycGMiwvMzx0zFCxn2sFs24hgVIOx1IJfiPlKdZDDJL++M+",
-	"sFGwyIHrKDO53zfO8Q8J88nJ5P8c1QLiyP6qjl49x2k0Veevy3wKMoZk++MgrmVcP3ow2QrAC5GVOWwg",
-	"LPvAHuC7Mq+qQnAFKATfSDHNIDf/zgTXBm5GNBZFxmbUSI6jwj7x//5SRoxcDgSiHxdnbAsiFDkr4Jqs",
-	"pOCLBMUAfqkFSQXh8FlbRNuxzFRPlWIL/hY+laBwhYUUBUjN7C6m7ttNK/rBPOPwii8xDbkKYqmLGeSD",
-	"V/ZxywjuCSolXeOgIsyANZr+NM98qN4U079ghuuxWzOPdHc1E6VFR3891Sa6oGWzJRHcyMzVEjhKTQMc",
-	"YgQuoeocUiP2jdDcYfft3Xa2ZVcZ2tkPQVxVu9pBtiSTOc1Ztg4AOZmcM55uQ/4pVec/meeGr/4Znsm9",
-	"5VPdAlpKNdx2ikFvZcBTi1fgZmN/GtYT2QWkyMAZUIX/wucCl5NMxAVITc+BN1bUGe5slwWwdIDu4OV2",
-	"ELiG0AZSSck1y4aurYMGuy4zV7WaxCpVdtQogqIiAQnG/V/Ren97HT42tNR+ZRhVBSRCDHBbjoDeNp+D",
-	"hpm2ikBgi2PwhD9eAgMpulbbRZvTd9yC3PTu5Q8b9qT6m6oAPwgDFXC2SSk7WmgtL9IFqJCY4prO9PCl",
-	"vKFMhgghY/x831F6QsutzY8e3BfXksHeEDbDrEP7wmN6K2VsgDsO3Jevc201Lpplxj77c5uypiZXH7oq",
-	"hlMBlTU+mEajx0xKF07DaT9vjslCioWkuX2lEEpDSoQ9Qa1EuqXIFJY0m4dE6C5SeQpzIWH0PUrQCHVj",
-	"bdaqXH+jxp79/rvvHxINn7V9e0WVsaiWkD4hK6aXhBLF+CKrjDqObN3byUyowCRibt4vMqYTkonFbZGm",
-	"hlRr4IhymjUg4xRpM165VY2z7Dr8bPtLMKdcDRp1iOBEyvWSMwM6PzOw68PBAPrR40f3iHkG4WtMZYeb",
-	"hCzh846HsfdMDDyQJdDYSNLY9M4EGDCSAtjhWER6HXAixlDmjJytsqUyhiq4JFaRcMdPW5Fw0KjYL3Gi",
-	"piIRS35NjEbF1k+OSrxel4NcmBGR6CcevDQLqnEvLlgKfAZ92Rc9hUvOdPCHC5qV0JY8EeYKn9j2/dA+",
-	"XzKemkl6i0wb+khfRW3sbdjx4l8IEMwG/WZBGe8zHHwuYGbktlpzWihQpCg1kWyx1MPkj5UpfW0q5E8z",
-	"ELRuqSKjMyCrJcuAOKlMWKrITOTWm7YQITLfVUcrBOP6jOdbVQjzHL4gxZROWcb0ehCJ4BuFMHS73bq3",
-	"z6GGGIGaP6AGiYsOeVZE1lcqz9GZVw3egEuD/Nyy2jBwZLOB2vfWljzXHEBf+lFkKcj9DNKdSe6LG4aV",
-	"DHfGoSOCLaah9Q12HfurpciAWGoncylycky0IPf+/ejB7btoh9O8yMxId79/8ODRdw8eHH93/7vjxw8f",
-	"3n1096EhJqo1SDPYv785/p8/795+/OHP49uPP1weJ3cfX337jxDIDXUPPzhDhPNKqRLSU3EOvI99BTMJ",
-	"4bNB+zc2Yhsf6ruqzLeJHz0EYkMipywPnGIz4EpIq3O1UYBBAaewojMDlU1RakI5EaU2AjNIQbvSbQ4p",
-	"o/wsZ7zUEPCT/USLjPLbvwAD+YTQqUJvJApwo+CTJb0AjEzUq2wvcYAsrXw9AQdeB9yOqBveoQqGIdD/",
-	"LMR5WewrquworzTkexjPjUECpGn98IOIXpUFyAvxGbKB7vnm+hovVyfDhuVGfUY0zEj18Luycttt3Hcc",
-	"R/cRhvYvYIhr0yE1QC3f9xz6xei6byRcMFgFQDgMMHQ+Z9zpJX0LNRcpZGhuZwzmCWE2wKhXgmhRzpbD",
-	"GHA6bCkpU5ryGTjNasDATcVmEOTfOZIMGUVC02y7o9E+1aOXWgly47S3k0yosXfiaIxzwvYtWU/DdOiD",
-	"Xjff1+1hCKFyfaxFSRRdnRCaZfZY0UumyGxJubPnaxu4EeS912TFCANYyDXWHQLia6AyCL9rE9WXkpZt",
-	"wgnvtZQioIHQdNeohH1jGrbsKJ8trXG5HQxxr/VwYIbtYreKxlqTeqObzxgLp70tCQfu6x/Nr2EVRdkg",
-	"GHvO9VBuMNBdF7DbGKePgzWy3DeVtdFe7rJKKOj7sUS2wwn4VmSwFaJ1hgKOHVlrRB3nQkNf2ISg0xv0",
-	"1wK49yt10NWIEO8UGfVekgHiZ2cNu1atB+nCNA2c9SivgSyBYhKRzTPKGA8bAVXMe5g2XfkN7Ht+EUkN",
-	"znoXGzwDvzqdv+Htmwkp7ZmQTJQocbaSzzKgMujww5jOdRXHe7jK+kNXgXgDoshgX2njWO/60ibGuyOf",
-	"DhtEQQbzpl47FSIDym9GSMTOCVxTHFzPUE/pA81vxRGcliXUg4y/scjqntNQeG42g0LHZJH/9UwtqY1w",
-	"bTxg8CF8TbMLOFuKUg6VKDUPBheS0nWP4oIZGi71IjjIbskAlUMkoOVv8KNVeSDBJWxyIphfdSl5/Fdj",
-	"osV+tYIrnlx0VoA8ayBmIF68HNwupivPnsFV2/mxQb5GEmdaFOQx1wBBTZqTBtiCnIne895R9Tkh64T8",
-	"hzBO0LDqp0/FYVIL8/tNYX4/IMzrbDyaphjTotmbBgPaZL9upkIK/QUrTacZJJjk60LbKsQBKWhqvbO9",
-	"n+YMsjQSLKdS+7xfaY1IF4dWNqsvmI3ErYURnIzDZ32mNBShrLY6N1CsQiMrTXWpItTMdOTEsF80A5KS",
-	"bXVI469+1GrmxGIhSFCNmMq1fCUD/RgLKcpi7yDt+cbI5odt0MHXQ1D4/yX1cahAOiCkZ4apA3zXcIm5",
-	"THJOxAXIjBYkL5W2rlqbve6GmoTzBzMFZ7gbFdOjzRO4z8gT+PbZ1P3eXucFlQzzZQ1XMG5JynycrskU",
-	"GF8QLQRZZCWub4DQ4EKfqZmQkJ7VrscBwZZdcwQoT89ASmsOdtTzlBqJSd5SnhJ8JiEFZVJZh7gEDHw6",
-	"98EQK8DMVUiYMdVd4JaXJMxolg31pFwDaoj2vVA7KzUpiyGA6J6DdfJCYxUtauuBrg2WFhY7pN6h66TD",
-	"b11oheguzM5QBhTXJcYohwshF9MMZc3RRSC+b1PanKfPaCl1pGYuskysICVraJHjhpzuWHSoSiMwZyfN",
-	"MiIK4MSbkcN4l0WOOTPUYPBULoEAgMzBU5lYAU3hMp7H7dHY9QvaEd0am8axR6tFS7W/EGG8tdpZ1LG8",
-	"wR+7iz/JDRNegRJZ6UXg9WPl3pXTR2HtEdiIPPfY8JSuXhZdXVWFFF/pxYQNIvEOzOroZTsxCjcaheRF",
-	"HJdWN9gChlacoQHWbe7468DZKinbrE7zULWgCIzC4LBJXVF4NEMcA1SvjSf15mqIa0c1GofNxsDG21h4",
-	"bwwG2mgNu8S5Hjv4lZM+X5Q8ZamtOrQcYjc44Ai4AJmy2VaS+d091ktAdN/vwFEGrFECGs4bIy08uEaR",
-	"tbydhRRiLn11pbOopc2TRMN60Y6E1IvEAEIgD6fW6ROjQzGtsIpU+jJPbqNqRHDU7CnBDK9J1+7dOR9u",
-	"56hZDzbv6rhStwBt5qIk+8Q2DSRmpZTANTG/AE8p1+qJARFkc5ehwtDKds+hgSgk38AwyCNY9ct0Qo5R",
-	"qzFgTiFjF7YadACr+PmCHlaWDrNRfYr6lsXa+G2KO+VaEKGXVv0YUqu2T0Cd2Sxgu1MH2EZs3WE5xDXv",
-	"vMOzoxCzRSAx/PFD8n/JHyxTgpsNgryg2TDNMhOrgVbQtTOD7Yt2qsRuILhhloZyv+g02yHoPWfSysGh",
-	"XBNhGpXTLDMio2ZxwtLKK9LHwF0jbu6dkNVSKCCY3m6ozSi66gk5PjEf5jTLFBHzOSm5eSLiWdiL4Ozy",
-	"GiRWAdADJwh7o8LEU3DyKVuUolQDvCkzUWYpWQgCzPAYWdF1mPuDhR6+uOMJgU8lzaz0dmWdZG4JaOSq",
-	"j9rLFUoLMWikijTzqJK93GEDEwkaCT6KpTvEZJCLAvOuqOQ+H3lo9WI4OWjil+TLGxCVSYNKGrNV8I1S",
-	"3VjKb8BbOTCVCsLllp3P19aQ3cK26MenLvs5HKg/C5aDuyYg23Zo646xlsInmXXc4a0CLU3Vua/PGly0",
-	"+uIiko62IZlg3kiR3zcXfofEhIFlXq5EY++Md6Mn7RSu3u5FwlgxugnZ0NxhXvWdCERCCoz4ExeIGOQS",
-	"3rlwhAkZzM40iCMFSGK3PWw3N1OHIlt+n42B8PrJKky6/R18arR6F+fAG0Ka7/DBTXVxRoIHXddVoqTV",
-	"czKG7X1QnbaCw9hwRuEhM8oxhGKET1DRCWnKVQeUqhLPFuf06sC1Db+Hi3ZcpU4lX4JFO013ZEWeNbt6",
-	"CMRk9XPBA9oq+BLkYQXQTuZvw1c/ZGi+jK3MiuIbd7QYSbI9C9xC1jwaW363EhKjDbd91NB+isUO7Qjv",
-	"PB/4IZz7uSbFRmpAKIq/rW3Gqc8b2ydByiJ2/KquU9tjqyj1OClcz8PqUDQiEVzoRg9/JPNxQ2bWwCOc",
-	"YZ3Tbv1N7CuRZLGMKn1WutyaPVlJwoU4Hz5SSFpWOWM4SXPxzb1HQb4/CdtSr2un+J1Whm4nDEA/76Jc",
-	"5Izv8jgvZxmwoWHcdqXOkDdcpfAZ47u+IUo98JUdVrShIqgap73qzooqiFWQTjyGQkj9vXYke/lrZWwl",
-	"YYMy9fdKFelZQGUO6VnV9GQAdKZUwVlTeRrijWx0ZxnweMoWEHJgvPvx6e17Dx/5mILziEK6tUnDkqoz",
-	"LUu9DPtDD8wSsbKHnXhla+TRiE8bZhlmZkj4Cw2esx2Rc32mHdq+zOYzRvdbFkQLYnunNbIKfEbBE3L7",
-	"LrFNIxAu1i83zBktGV3AwKm9AjxgdmIHHhjkMqAdTl/hyo1G4LC7qR6Ak47YajN40mxf1KeZpCNDGthu",
-	"iLaa/xr760u8ivODog9l2A+SwXyHVhw75VdtgWV8VXsf9s3NXf/I/4PpZSppPGJ5gGaKAeMptDg0uGel",
-	"sQPfmT279XjlFOGAUhmoRBvVvb/UurBdKRmfiz5HnhrJB+kCZOK4DFt4oLX8qYQSCLY3qqKi6NgBmt95",
-	"z9/zV6kiVJqDZMZymmGHpRPDtmtSKsBcokcPyJRpZbteUvKvd7++9i0JUgGKcKHvEGRFO1Qr8fgO+Uj1",
-	"R4Iyik5FaetnCqr0CakbF7/n37SbHXwbbGWcOLmTA+WqlvhVKM71wKLavOwkENN3yM9MadfchHFS0AWo",
-	"J+SjMYQ+YifhJbzntjutP1etLDOQ8v2FXcm9KwACnt4hLynLSgl2167pKLHZyYp8Y1b++MHD776t+lNh",
-	"fjP5OBMpfLTQ/FjlEH8kiq7Ve15nDt8hL9nCDo9wc040nAsNJ5qRlGp6QjIxoxmRZQYK8ZiCgSXJ6Zoo",
-	"8N2RoTALz23/YZdhPJmDtknBFyCVizP5nC9asMnJ5P6d4zv3bSOJJdLr0cXdo7TZDG9hmzkYHsMkw1fp",
-	"5GRiIF63zOt0cL13fLyhe+tuXVvrSQJ9W+t14k+uTXB4wGqFjUaw5ljIcyrXjsssiDEMlQlxjnFpzGHE",
-	"PHW6UMj+9qD7YF43wLJSOQilf4L+BQ4JHV8k1QdN3SRuBNj8sRS23N3IMjKFTBilQIsGVCz11lApqiKw",
-	"KP24OrGDggdnCIDHLW9/0Ly4ALmeinSNiSOVQd0DC56xAUA8TdM3PlPHlS38IGxl4iggqItYr9rnmJYl",
-	"XPVgf/cGSBOr0UYA/dPUHFeWyPE0ITmdLdGhPLNNdLeR59GlRdhVtxV/JOpfP3LUaix+9QEF6GzZx68t",
-	"qDsoiluVe4OwfBMCyGZOrfE842I1Ar7tDiuU31IEqw1Rk+BCg2+3AGtrr2DN4mASONKVSysqsZzX64Dw",
-	"dDOEBLr7ZX+2qeFnx0yqnkd6CUwS22JJRaTYnlwSFILYT+rUdXg6kBT0baVuVAg2G2UFcGp9rCPgFOch",
-	"1CIUk/McFo36q5ZixW0bEmE70e3GEkeX+PfKWiYZWH90G4Nv0Rldo/CQ7BGCpHeG7w9KuxMPy/GZIAne",
-	"oqAbxH+961Y+OBxe1NZ6VI55i/6AmPJTBHDlVziOzu5Gc12DwViEeSGkq7pzuPNTVpTuvji6tP9cbVLh",
-	"f69vuDgosGJqvAtlj6HGu8bKlVfZ33QBzpVn3Qz4pZEhzuMnlb3/JgjQXbmhcaFIl2YrbBzZtKU8dEvS",
-	"jjNE9W6c4bRqxDH+mdO+IOSG9bLqCo8ATS3FiuSUr0egqH+yC3AOapsWj6IOTSHnQXKZ3XjjB7qpXAJG",
-	"ZU1bZ9rVAEo4Wjnf34FIwrsWD0kUXffl35MsfgZNKEez2FVDWxKpRPSCXQBvkswOFGFbdm48357ZRw6p",
-	"iOAiQwLb/jCOrF6LEhPAA9BJDsEBCLdTd+fJTsN3rnozUxyCfVoXrNywLu8SqXoYX4tSKoKdf/HQxGpT",
-	"IkuuiCj1GFoOPYdaiBoCSLxYFRyI0SDTnfnn6BL/Xh3BZw2uxde1CSrZ+rS/bDBOey9wHc+qawcPxLgu",
-	"lzmsac18ovOeGPsBFow7hcoQA3UJg9dEkesv8+Vx5EqpnzXuhhybwzvV2jd8PsZ4HJ3fLt9uDJWJ2ujd",
-	"lM7OrffFta2h1zkKG3SCWYlfA53gQg5LJ61K8C9AJ5jAG3RFuNzQEYILGJBFUuk0/H5CaKO0mDDlY6P4",
-	"HNPOJ0qoJrYfx1CSgvqOpqh65e9xOiCA/RQhxzIGeEeBru3d4ZOL0PZtgMp9sZ+ulYRvOa203g13pYbf",
-	"9Ansg8G49rcMXkaE2i1F0KMUms3dcbDDrb+xOloMcxtTwPoho9cWuxtwhtxYehxKb4nPP4VMrLbNX13F",
-	"c+0rU8NoEzLt7Kui3onIUsD8rSrf3H/BYdXOFWrCeZvbsb6wd+DT9l7euFfGyYajSw/TjW6zFy5P76Ay",
-	"Yh07rcHXSOwpJH7lbqzGOT1d65bD0d5TdijJ0XYUN1LaxrrkN4rvZn1d9DB4WRfJHAzT1RyHPA7+8Gkf",
-	"iqhSFWzGRKkIF6uE5EJpgoVmPtOylwxygDOicePQzqdEVe902POleYlteLhGze8OV11/AeGW4UUch3I3",
-	"/yzE+W/FgXTh9h0iN6wKu6tfQtFNawLjyWcveh4p5FPVEIo5eiyb1fWJ4VjMBtGN/EP0l7iyGMe5VfZv",
-	"XBeuezMegCLeCKV/cUVpX6Wvrd0m62Z9bdGj3Vo5I9DRv4Qhz5WoiWm6JpRkjJ+HDvLNJHJUNDpfHIBU",
-	"7OieWr4OZB+PO7fvHRLAuVHIFQAf64ynBLFGVthpJKfn8MTYykvGF7UhvQsR8PrOlZgy7K9lOSAY/RQR",
-	"hdgvciQRXHe18b2xWn2xAlL2ABrS52FacLzNUHjY9WGG/c/+w3ab3Yhzwlxqj7/mk2Zx4/ZaytiHONlX",
-	"18pErQN/9cyuyKfq17k72Q7GLnZlAXbxGxuHVWaQVZ2iZV1FhTFymoNNwfCZd/XtWY6B/FoOFPF7mqbu",
-	"Sp6DJd75a4NuVoNoznqY9OOXiEhCEcE1NgvGOaRWGrbutepjdAtjHV2aEa82HysV7g7KJvFDxV8JtXdS",
-	"qh2qSj1yrDBYnR+HT7abknaeoU87MTYM0UdLprSw7T82I/xH9+CXccD7EME44rHVQdu3WWxcqWezhiyk",
-	"bili7+tKiHWR9vwxX4IMouj9VN8wEMOnv4TggJj0UwQwiV3Vx0Dkj2JFVoA3HjbM8xxAd6rYfYXsuHmE",
-	"ezPiJ988Po4nKOGwWDITRMSsXd4Y5o9P9FwJeW6TOpXPARW21yTB5jojJxzF4O6bKx/SyeKbZH+tfpZu",
-	"E++/navlN54KzFTynRsGG9bWJ7DZwnjrnvlvTvar27/5sBJl2t71QCwMjH65FuXIfDmO59zL+6NL999G",
-	"lfVdZYMeDF9V79OwNFV1a9Rx3EleU7HyU0iyhKxKraea2CbNeFfLYXwjW552E2HKznAkDlFHHaT/tvpo",
-	"hdtbyjfgIYhLbZukRfXQrx23eX1ve1Sy+rvdD+r6tVMcMq7bdlcqa0/4nva1R+xLYu5LxDvra8UOpHdh",
-	"c+avVenqXLnyN9O43lCpMbhlW0cbku9wgFHH/LE1Xdsu6TZHBK8Nm4JeAWD8Nt9FYbNEdTPhME9fXwd5",
-	"HI87942GwxBr44XDGqR2dFl/2KwVNj2lB85VeKUhWAHQcDuOm6hgj5zmHTO75yiMn0mm2iCPxaVGSNbZ",
-	"4nypOnbF+y5UFXk3beGNp4WYGVwm2UpIvSSpMBzWSygbx6wLRv98z+vBIHF9vm8oVez6OWvNWw62vN7t",
-	"Xi98g3HDfj5139pp4+Zt/9ckwiEFHl3asPNGoe0qBf+bq3GeNqorsOLdd7z0cahlZdrerOPFzPLaRf4H",
-	"oupoDK1rx5XFK4DMUioCOYjXtHFv3VdU/kOVuw5tnKZHT7H1MVEiByynhkzBLUXqqyUSK7h0KTlh+gl6",
-	"DG0b+k6BUMlTmxkytBRItxrBR4VA/dQhIV7PEuzm1uiXOEZlEJ0t6y5JGCuZrklK1098l0YF4HI2xIon",
-	"9tIKAr4X3C11Myf6sNOoLzxtx94Ub9YKnsRS5OESmNSqEINmwd6d8Uk6Z/XOU9gLRHKWcrZYakUKNHqX",
-	"YKZU5JtXT18/xZSMbyPz/8dyQ6gg57fTZ8EOO40Or4hB19v1zw9GECqQFx61pcwmJ5MjFJCODi5rpLnW",
-	"g9U3dUOcy4620PrOGV6Nb+pEpctmwVb7C1uhcPXh6n8DAAD//w==",
+	"3H1rd9s20vBfwdG770l7lomdS9PG/pQm7TbbpM2TuO2HNutA5EhCTQIMAFpR/fi/PwcYgBcRkCiLcrL9",
+	"lFgkcZkZDOY+V5NUFKXgwLWanFxNSippARqk/Yuqn2fm3wxUKlmpmeCTkwklpVDM/JEQIQnl5M33z8jD",
+	"hw+fEM0KmCQTZl77UIFcTZIJpwWYr/Qkmah0AQU1Q+pVaX5VWjI+n1xfJ5M0p6x48dw8tN+XVC+az+3T",
+	"STKR8KFiErLJiZYVtEecCVlQPTmZVBXLJklgBpZBUQoNPF39CKv+xp6SX3558TwhBc2ACJ4CmQlJlguq",
+	"CVNECzIFkgkOhPKMXECpiV5IUc0XBC5BroiEEqg+JUyTKaSiAEX0AgjLiJjZ/wHXcmVgZv6wO0qIEkSb",
+	"GegfHL83c1GuliAhszNxod20c8r4PfKKrojS5gnj5EMlNKiEUJzrxXdn35NM0pkmC6oI0/f+4B4hC6AZ",
+	"yAakLxpw3DXw2ATcgn58CXyuF5OTh98kk4Lx+s/HIVBzqKTgP9mJgvi0/2ycsZnifmiGks7hWSWVkPUM",
+	"axSX4tPNVGeGeckKpmOj5PZhe5AMZrTK9eTk/vFxYiDDiqqwfx1byLg/60UzrmEOEqcDqQT/gfIsj0Fm",
+	"gQ/3gY2CeQFcRw+Te75xjn9ImE1OJv/vqGEQR/hUHb14bqfRVF38VBVTkDEk48NBp5Zx/fjRZCsAtQR4",
+	"y/6C/uk1h4uBMofCnATz4imheZ6Q5QI4oVOFWw4hWZkR91nWpcirAjbQO76wB1avzaeqFFyB5c2vpZjm",
+	"UJj/poJrszfDscsyZyk1IDkq8Y1//qkMfK4G4taPa2fsQthywiVwTZZS8HliuZP9UQuSCcLho0b6w7HM",
+	"VE+VYnP+Bj5UoOwKSylKkJrhLqbu100r+ta848jNfsQ0FCqIpXXM2OP5Al/H8+neoFLSlR1UhPlCg6bf",
+	"zTvv6i/F9E9I7Xpwa+aV9V2lokJ09NdTb2IdtCxdEMENK7fkakjYAIeYe4BQdQGZuY0M/e6w++5u17aF",
+	"qwzt7Nsgrupd7cDyksmMFixfBYCcTC4Yz7Yh/4yqix/Ne8NX/2wB6UUpGA/swVzt51R3wJdRDXed5NJb",
+	"Ixc6wGsMdhD5JK1nI188e/D2NdG5mN9tfv3yBI8I5YRWGdNCkguAUoUmE5LNGQ/CSgqh++swgtfjJ48f",
+	"WG5HzAWfkAV8DI2tNjNNTVJxacS+ZDtdrWHCrTrxXNQu1UEuqSG+GVNOHusi6yIkpFkYX4JkMwYGlKsT",
+	"YljsPxdULf45pQraS44caDNwcD1WyOytYxd6AZ4hRwBujsTvhmmL/BIyy/pzoMr+Fz6WdjHJxEBd0wvg",
+	"rRWtDbcTwbJsgDDsBZEgqRkWNZC/VFyzfOja1pCA6zJz1atJUEvAUaMIil4mltW4/9dcsr+9tRvAcKHu",
+	"J8P4UeAuiQFum0yzvs3noCHVKNkGtjgGN/WCSWAgRVdq+6XoBHi3IDe9+/jdhj2p/qZqwA/CQA2cbfcb",
+	"jhZay3fZHFToguOapnr4Ul5TJkOEkDN+se8ovevOrc2PHtwXcvN9IWyGWYX2ZQW8rZSxAe524D5/nWlU",
+	"IWie/zybnPy+TftQk+t368Kp02kUatNMWy3eTErnTjbuX+GlFHNJC/ykFEpDRgTKXsiR7igyhQXNZyEW",
+	"ugtXnsJMSBh9jxK0hfp10lYC+hs1csI3X3/zFdHwUePXS6qIuTMhOyVLpheEEsX4PK+tFNwe695OUqEC",
+	"k4iZ+b7MmU6IkX9ElnVEiUxU07wFGacZmvGqrQoAHtfhd9ufgjmxfNCoQxinpVzPOXOgs3MDuw0CmXnH",
+	"wpeIGXG4icpmGy5jb2obeCFLoLGRJBj5DoaqDgpgh2vR0uuAGzGGMqceb+UttRpdwyVBQcJdP11BwkGj",
+	"Pn6JYzU1iSD5tTEaZVs/Oirxcl0Bcm5tBoboJx68NA+Kcd9dsgx4Cn3eF72FK8508MElzSvocp7I4Qrf",
+	"2Ph9aJ/fM56ZSXqLzFrySF9Ebe1t2PXiPwgQzAb5Zk5RNVpTYD6WkBq+rVaclgoUKStNJJsv9DD+gzyl",
+	"L02FdA8DQbSzljlNgSwXLAfiuDJhmSKpKNA8PBchMt9VRrO60TkvtooQVts1H0gxpVOWM70aRCL2i1IY",
+	"ut1uF8L3rIQYgZq/oAaxizXyrImsL1ReWOt0PXgLLi3yc8vqwsCRzQZq31ta8qfmAPLSDyLPQO6nkO5M",
+	"cp9cMax5uFMOHRFsUQ3R2L3uqVouRA4EqZ3MpCjIMdGCPPjP40d371s9nBZlbka6/82jR4+/fvTo+OuH",
+	"Xx8/+eqr+4/vf2WIiWoN0gz2ny+O//f3+3efvPv9+O6Td1fHyf0n11/+IwRyQ93DL84Q4bxQqoLsTFwA",
+	"72NfQSohfDdo/8VGbNuX+kZO82viRw+B2JDIGSsCt1gKXAmJMlcXBdbL5QRWa8ywwqaorEFMVNowzCAF",
+	"7Uq3BWSM8vOC8UpDwML6Iy1zyu++Agby1HkDHAM3Aj5Z0EuwrrZmld0lDuClta0nYPpdN0EhUbesQzUM",
+	"Q6B/KcRFVe7LqnCUFxqKPZTn1iAB0kTH0iCiV1UJ8lJ8hHygv6m9vtbH9c2wYblRmxENH6Rm+F2Pctfh",
+	"0Hc5RPcRhvYrMMS16ZIaIJbvew+9MrLuawmXDJYBEA4DDJ3NGHdySV9DLUQGuVW3cwazhDD0mOulIFpU",
+	"6WLYAZwOW0rGlKY8BSdZDRi4LdgMgvxbR5IhpUhomm83NOJbPXpphCA3Tnc7yYQafSeOxvhJ2L4ltDRM",
+	"h77oZfN9zR7W2+JNHytREUWXJ4TmOV4resEUSReUO32+0YFbUQsP2kcxcgAQcq11h4D4E1AZhN+NiepT",
+	"ccsu4YT3WkkRkEBotqtXAr+YhjU7ytMFKpfbwRC3Wg8HZlgvdqtorTVpNrr5jkE47a1JOHDf/Gr+CZZR",
+	"lA2CsT+5HsqtA3TfuXo3Bp7EwRpZ7uta2+gud1FHyAQ8ofkON+AbkcNWiDYhN3bsyFoj4rj3EHeZTQg6",
+	"vUF/LoF7u9IaulqxBTv51L2VZAD72VnCbkTrQbIwzQJ3veXX6KomYuYC53LGw0pAHS0xTJqu7Qb4nV9E",
+	"0oCz2cUGy8DPTuZvWftSISXeCclEicrOVvE0ByqDBj/r07mp4PjArrL5Y12AeA2izGFfbuOO3s25Tezs",
+	"jnw7bGAFOczacu1UiBwovx0mEbsn7Jri4Hpm5ZQ+0PxWHMFpWUEzyPgbi6zuOQ2559IUSh3jRf7puVpQ",
+	"9HBtvGDsS/YzzS7hfCEqOZSjNGcwuJCMrnoUF4zQcKEXwUF2CwaoDSIBKX+DHa2OAwkuYZMRwTzVleTx",
+	"p0ZFiz1FxhUPSzsvQZ63EDMQL54PbmfTtWXP4Kpr/NjAXyOBMx0K8phrgaAhzUkLbMGT6WPFulfVx4Ss",
+	"EvIXYZxYxaofeBeHScPMH7aZ+cMAM2/iOGmWWZ8WzV+3DiCGia5HKmSBYC6l6TSHxEatO9d2MMwsA03R",
+	"Ott7NGOQZxFnOZXaB7JLVCKdH1phPGgwGomjhhGcjMNHfa40lKF4yCaqVCyD8Wya6kpFqJnpyI2BP7Qd",
+	"kpJtNUjbp37UeuYEsRAkKCnErM9IbURwb6vWCa/QOG1gmwO9BEWqckllHc43PJwpHCi4JShw15C/bqSf",
+	"3VcEDrVv6UY2o4H2nLkUVbm3s/pio4f33dagQvN5CAr/U1HvjwsE1EJ2bphbAGct06BLEeFEXILMaUmK",
+	"Smk0WWNaihtqEo7AzRWc292omD5h3rD7jLxhvz6fuufddV5SyWzEueEOjCMtmT+nKzIFxudEC0HmeWXX",
+	"N4B5cqHPVSokZOeNCXaA02nXWAnKs3OQEtXiNTUlo+bmIG8oz4h9JyElZVKhY0CCdQA7M8oQbcjMVUpI",
+	"mVpf4JaPJKQ0z4dalG4ANYv2vVCbVppU5RBArMsDTRBHaxUdauuBrguWDhbXSH2NrpO187YOrRDdhY8z",
+	"VAEBfmF9tcOZkPPthqIH6TweqI0WTyOtNR6rmchzsYSMrEAPid/uqPKRcAojQ9A8J6IETrw6Pezsssh1",
+	"b4YaDJ7aNBIAkLmAa1UzIDFdxTMhPBrX7zMc0a2xbSTwaEW01PsLEcYblFKjBvYNduld7GpumPAKlMgr",
+	"zwJvHjPgTVp9FDaWkY3Ic68ND23rRRM26ZKW4mv9gDB9kxSF2ovbDRCzG41C8jKOS5QNtoCh429pgXWb",
+	"W+ImcEYhZZv2bV6qFxSBURgcGNwWhUfb1TNA9Np4U2/OJ7qxd6d12Wx08LyJuTnHOEAbrQIugLB3HPzK",
+	"Sf9cVDxjGaYT4wnBDQ64Ai5BZizdSjK/utd6gZju9x1OlAFrlICGn42RFh5co8g7Vt/S6HHSp007y4LE",
+	"eFFrYJh3PULNIq0jJRCP1Mj0iZGhmFY2PVz6/G2O3kUiuJXsKcE8tnX9f+e4wJ29hz3YvG38a+spnKnz",
+	"Fu3j4zWQSCspgWtingDPKNfq1IAI8pmL1GHW2uDeswqikHzDgbFnxKbzM52QYyvVGDBnkLNLzAAecFT8",
+	"fEFLM8uG6ag+VH/LYtGPndmdci2I0IuBWXl7BhYwjIbGnTrAtmIMHJZDp+atN/yuCcRsHrB2PPmK/H/y",
+	"G8uV4GaDIC9pPkyyzMVyoBZ04whp/BCnSnADwQ2zLBQDR6f5Ds7/GZPIB4eemsihUQXNc8MymiNOWFZb",
+	"RfoYuG/YzYMTslwIBcSG+RtqM4KuOiXHJ+aPGc1zRcRsRipu3ohYFvYiOFxei8RqAHrgBGFvRJh4KFIx",
+	"ZfNKVGqANSUVVZ6RuSDAzBkjS7oKn/5gwotPcjkl8KGiOXJvlxhNZkhAI2e/NFauUHiMQSNVpB1Pluxl",
+	"DhsYUNEKdFIs28E3ZU9RYN4lldzHZQ81e4aDpCZ+ST7Nw6IyaVFJa7YavlGqG0v4DVgrB4aUQTjtdN0C",
+	"fFMJ2S1si3x85qLAwwEL58GCCq66z7YdYv61zSnxwXZrboFOopqm6sLnqQ1O3v3uMhKWtyGoYtZKFdg3",
+	"J2CHAI2B6W4uVWXvyP+dayNstyJZn7k1E7KhMdS8LigT8AiVNvKBOIfMIJPwzgk0TMhglKpBHClBEtz2",
+	"sN3cTj6O7Nh9NgYENG/W7uLt39i3Rsv7cQa8IaT51r64KT/QcPCg6boOGEU5J2e2bpcVp5FxGB3OCDwk",
+	"pdy6UAzzCQo6IUm5Lm1UZyRiklIvH15jGEI4ecllLNX8JZi81DZH1uTZHFcPgRivfi54QFoFn4o9LBHc",
+	"8fxt+Oq7Ts2PsZUhK751Q4vhJNuj4RGyi0jlkppvtqwF1ttw13sN8a+Y7xBHeOvPgR/CmZ8bUmyFSISi",
+	"GbaVDznz8XP7BIohYsfPbjvD4nllpccJZXseFoeiHongQjda+CMRoBsi1AZe4czme+1W5wU/iQTN5VTp",
+	"88rFGO15lCRciovhI4W4ZR0754oCNYtv7z0K8v1JGFPebhzqeFYruuvlpD7uIlwUjO/yOq/SHNhQN243",
+	"Y2nIFy5j+pzxXb8QlR74yQ4r2pAZVY/TXfXaimqI1ZBOPIZCSP21MSR7/os8tuawQZ76ay2K9DSgqoDs",
+	"vC7+MgA6U6rgvC08DbFGtqrUDHg9Y3MIGTDe/vD07oOvHnufgrOIQra1WMWCqnMtKwxl6ttDD3wkYukf",
+	"O52VrZ5Hwz7RzTJMzZDwp1V4zndEzs0P7dACgBjXGd1vVRItCFYfbEUV+IiCU3L3PsHiGRYuaJcbZoyW",
+	"jM5h4NReAB4wO8GBBzq5DGiH01c4g6XlOFzfVA/AyRrb6h7wpF3GqU8zyRoPaWG7xdqa89faX5/j1Sc/",
+	"yPosD/tWMpjtUJJkp/iqLbCMr2rvy769uZtf+b8xvcgkjXssD1CONKA8hRZnFe60MnrgW7Nntx4vnFo4",
+	"WK4MVFod1X2/0LrEuq6Mz0T/RJ7Z6NNsDjJxp8yWMrHa8ocKKiC2zFPtFbWGHaDFvT/4H/xFpgiV5iJJ",
+	"WUFzW2nqxBzbFakU2Fiix4/IlGmFdWMp+ffbn3/ypRkyAYpwoe8RexRxqE4A9j3ynur3xPIoOhUV5hGV",
+	"VOkT0lQk/4N/0S368GWwRnni+E4BlKuG49euOFcLjGrzseNATN8jL5nSrsgL46Skc1Cn5L1RhN7bEuEL",
+	"+INj2Wl/ryIvM5DyhcNd6QGXCAU8u0e+pyyvJOCuXdleglHainxhVv7k0Vdff1nX6bJx3uR9KjJ4j9B8",
+	"X8dSvyeKrtQfvImgvke+Z3Mc3sLNGdHsXFZxojnJqKYnJBcpzYmsclAWjxkYWJKCrogCX/YcSrPwAguL",
+	"u0jryQw0BkdfglTOz+RjvmjJJieTh/eO7z10wcKWXo8u7x9l7aKAcyxqYc6YDTJ8kU1OJgbiTenAtRrI",
+	"D46PN9Q/3q3ucTNJoPJxs077yNX/Dg9Yr7BVStlcC0VB5cqdMgSxdUPlQlxYv7SNYbTx+nSu7PHHi+6d",
+	"+dwAC7lyEEr/Av0KDgkdnyzWB01TLG8E2Py2EJj2b3gZmUIujFCgRQsqSL0NVMo6GS5KPy5f7qDgsTME",
+	"wOOWtz9ovrsEuZqKbGUDR2qFugcWe8cGAPE0y177SB2XvvGtwAzNUUDQJPNed+8xLSu47sH+/i2Qps3K",
+	"GwH0TzNzXSGR29uEFDRdWINyimWot5Hn0RUi7Hq9x0bE69+8ctTpGHD9zjLQdNHHLyYWHhTFnQzGQVi+",
+	"DQaEkVMre59xsRwB37jDGuV3FLFZl1aS4EKDLzsBK9RXbO7mYBI40rVJK8qxnNXrgPB0M4QYunuy/7Fp",
+	"4IdjJnXtJ70AJgmWmlIRLrbnKQkyQVtX68xVujoQF/TltW6VCbYLhgVwijbWEXBq5yEUEWqD8xwWjfir",
+	"FmLJsRyLwIp8ux2Joyv77zVqJjmgPbqLwTfWGN2g8JDHIwRJbwzfH5S4Ew/L8Q9BEuxDolvEf7M+Su8c",
+	"Di8bbT3Kx7xGf0BM+SkCuPIrHEdmd6O56slgNMKiFNJl3Tnc+SlrSnc/HF3hf643ifC/Nj1iDgqsmBjv",
+	"XNljiPGuwHRtVfa9YsCZ8tDMYH80PMRZ/KTCxlZBgO56GlotedZptsbGEYYtFaH2ZzvOEJW77QxndUGS",
+	"8e+cboudW5bL6iY4AZpaiCUpKF+NQFH/YpfgDNQYFm9ZnVWFnAXJRXbbnjnWTOUCMGptGo1p1wMo4Wjp",
+	"bH8HIglvWjwkUaybL/+eZPESNKHcqsUuGxpJpGbRc3YJvE0yO1BE2ukjFGParW5DB4Rna5YI826tdpz7",
+	"jsPShpX32hx5H5ll4W25xVY92JNRx87MK3oBf0tQv2Vzbq3j3Qxfe1N6lbYP4+00e+TCQrfTre/9eHB4",
+	"mokiIDWLHYdsy2qas9QM6BNq/PRoXrd/uwK/YxNvFCu2CPJGSfkZvnJIlcayuxD88cE4Ut9KVDaVJMBn",
+	"D8IXLNzOXBepnYZf6wZrpjjERdxpWXXLVgEXktnD+EpUUhFbS92K3zZvnciKKyKqUe4PegGNOGYIIPEC",
+	"muBgG7btIpvh+Tm6sv9eH8FHDa5o4o0JKtn6tu9HHKe97+w6ntWdiQ/FQDErInIX+ZSJPTH2Lcxd41Qk",
+	"BupCj2+IIlex69PjyBVleNZqHz32CV+r+3DLknbsjFs3movcHUP5ohgHMKXpBdpxXSEwuqNQvU4nNr75",
+	"c6ATu5DD0kmnpsQnoBObChA0aroo8xHclDa0w5LKWguFU0JbRQoIUz7Kwr7HtPOuEKoJVvYZSlLQdL2L",
+	"ile+M94BAeynCLmobKjIKNBFHSGmgrkf9pO1knAj9Fp/3tBOPfylT4UZDMaV7/h7FWFqdxSxtunQbK5r",
+	"zHCDdhLLyLcBM5fgPRoQmdD3FBvSPfw4FCgXn38KuVhum79ubnbj9uVhtAmZre2rpt6JyDOwkaB15or/",
+	"Ac0GwXJ52x0YTU//gW9j6/645uV4w9GVh+lGA/x3LuL3oDwiqgODz7bak0n8zN1YrXt6utId1wV2fjwU",
+	"5+i6nFrBsQO8ToMoNo7vj6WQbXvdOiNe2GoupwRoukAo3VEkpVxwltLcwcmDjcmmj2NCGCf2SJySrhFI",
+	"JU0EoZi5yELspu3qm2PBHuvsUFiOxBcicetNepqF+fmlZ+870mPeJcj1cxgkPof/cWwwGIDpfTwKIz1f",
+	"Mtfd3oIHcy5dH++sFRjAFFEgL8e3LMZIpp3cHZUfvm8yNA/GHOo5DilB/OZjDhVRlSpZykSlCBfLhBRC",
+	"aWKznH2Yfy8S8QBiRavt386CRZ1se1iRpEmSjw3XKjgxLFzj+Se6D3PbDetQvs6XQlz8Uh5Ifeo28rpl",
+	"7cn1XwuF1qDVxN4MhKpxYkPO2h2PxMy6y9qlXRJzYm0oom4Fv1sTm8vJdCe3Tj2Jq09NYeADUMRrofQr",
+	"lxH9WZpnuzUab9c8G5UGUTEegY7+LQx5LkVDTNMVoSRn/CIk+20mkaOyVXbpAKSCo3tq+TyQfTzu3L5w",
+	"VQDnRodTAHysO54SizWytGWuCnoBp4QLvWB83thediEC3jQ+i+lPvjfaAcHop4iIsX6RI7HgpqSaL8zY",
+	"KcoY4LIHkJA+DlOc4jXuwsOuDjPsX/sPu15pTVwQxr1qgL22aR63h9xIGHsXJ/u6t1tUO/D933ZFPlU/",
+	"z9zNdrDjgisLHBe/sXGOSgp53aZANim8NkCLFoDxfz7su2lh6Q6QX8uBnMRPs8z1xTtY1Lfv3Xe7EkR7",
+	"1sPkvnxvEUmoRXCDzZJxDhlyw05zyT5Gtxysoysz4vXma6XG3UGPSfxS8X0Z986IwKHquFd3FAaL8+Oc",
+	"k+2qJM4z9G3HxoYh+mjBlBZytR3hP7gXP43PxnuVxmGPneAuX+O31dcWQ1YRUncUwaaZCUGres8e8ynI",
+	"IIpea5xTR6ngiimrr0VR+1qKS3jWevGQCWPWZhhLWMWHe6PWTlJH7BEtweXIK/YXkLkARQTH1k6UW2xK",
+	"58gZ07TZE5ns7M5HiJOalUXEJexDcjPbfMSdtWXtZjFv2V8DiIrxNK98x5w4Sb2oX/sbERTlzm/AFHFG",
+	"pi59naJzwsW/o06HF8ddcn98Egv6hMd37YxCPh+alluxO8Z35TogxfgpAjRj2wyNcbn8IJZkCbYVestk",
+	"WADotbJOvmTMuIk1ewsHH3w3pTieoILDYslMEDnXuLwxTDI+82kp5AVmOSmfFCWw+Dqx1SZHjpuNwd13",
+	"Gzmk4dd3jflcbb/rXW3+dubfX3gmbMCtL2U22NiHdsrNVo837p3/5pj1ph6yj46gTGPzM4IwMDrvSlQj",
+	"n8txvHme3x9duf9tVKPf1naxg+GrbgYQ5qaq6RUwjonba0/IP4UkC8jrXFOqCXYtsc0LD2Ov3fK2m8hG",
+	"ng5H4hAV2UH6b6sj17i9o3xFSmJxqbFqcFQ3/txxW4AR1zdz1lfunYO6o3CKQ8aadF0oCjUX3+SpsdJ/",
+	"Ssx9ihiMps/ugeQu263kcxW61noQ/s0krtdUautwx14qhuTXToARx/y1NV1h2yDUh20f3SnoJYBV94td",
+	"BDYkqttx0Xv6+jzI43jcuW/VRW+xNp6LvkVqR1fNH5ulwrb35sDxUy80BBPZWq6QcYOnnLGs1XRx97ip",
+	"8QOiVRfkMbvZCAGEW4wvdQnbeCGyukTFbWt440khZgYX3boUUi9IJswJ6wW5jqPWBSMSfBOYwSBxjW9u",
+	"KXz15nG07bZfWz5fb+ckfMcdc/x8BhrqaeOmH/3XBOdaCjy6QoP+RqbtEt7/m5NKn7aSBG0JKF8C3vvG",
+	"F7Vqe7uGFzPLTy4aaSCqjsaQunZcWTyR1SylJpCDWE1bjZw/oyxWqlx/4HGqgD61vUCIEgXY+kKQK7ij",
+	"SNNrLUHGpSvJCdOn1mKIfZnW8lwrnnWdvtsyWnWnM1KUCTRvHRLizSzB8satAuJjJLjSdNGUDbW+kumK",
+	"ZHR16suWKwAXRyaWPMEubphmZbB0R93OjT7sNuozT2xhkdlWs8GbWIoinMmZoQgxaBabihafZO2u3nkK",
+	"7KhXsIyz+UIrUlqldwFmSkW+ePH0p6c2TOzLyPx/4WkI5ZX+cvYsWHKy1fLAYtA1O/j9nWGEmC+GqK1k",
+	"PjmZHFkG6ejgqkGaq8Vd/9JUiLxakxY6v9XJcc1Qzt9f/9BEU161E5G7P2Aa1fW76/8LAAD//w==",
 }
 
 // decodeSpec returns the embedded OpenAPI spec as raw JSON bytes,

@@ -20,6 +20,8 @@ var rolesOf = map[string][]tasks.Role{
 	"LookUp": anyone, "GetSupervoxel": anyone, "GetNearest": anyone, "GetSegment": anyone, "ListMembers": anyone, "GetSegmentHistory": anyone,
 	"ListEntries": anyone, "GetEntry": anyone, "ListNeurons": anyone, "GetNeuron": anyone, "GetNeuronHistory": anyone,
 	"ListTasks": anyone, "GetTask": anyone, "ListFindings": anyone, "PreviewMerge": anyone, "PreviewSplit": anyone,
+	"GetCheckpoint": anyone, "MakeCheckpoint": anyone, "GetCheckpointKey": anyone, "ProveInclusion": anyone, "ProveConsistency": anyone,
+	"ExportLedger":  anyone, // who may read the entries may take them along
 	"GetThroughput": anyone, // their own; throughput.go keeps everybody else's for leads
 
 	"ClaimTask": {tasks.Proofreader}, "ListClaims": {tasks.Proofreader}, "ExtendClaim": {tasks.Proofreader},

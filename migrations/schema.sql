@@ -27,6 +27,14 @@ begin
         using errcode = 'FE004', constraint = 'base_is_final';
 end $$;
 
+CREATE FUNCTION public.checkpoint_is_final() RETURNS trigger
+    LANGUAGE plpgsql
+    AS $$
+begin
+    raise exception 'checkpoints and their keys are never changed or removed'
+        using errcode = 'FE007', constraint = 'checkpoint_is_final';
+end $$;
+
 CREATE FUNCTION public.claim_enter(id uuid, who text) RETURNS integer
     LANGUAGE plpgsql
     AS $$
@@ -566,6 +574,27 @@ CREATE TABLE public.entry (
     CONSTRAINT entry_position CHECK (("position" > 0)),
     CONSTRAINT entry_reverses CHECK ((((kind = 'reversal'::text) = (reverses IS NOT NULL)) AND (reverses < "position")))
 );
+CREATE TABLE public.checkpoint (
+    volume_id integer NOT NULL,
+    size bigint NOT NULL,
+    signed_note text NOT NULL,
+    made_at timestamp with time zone DEFAULT now() NOT NULL,
+    CONSTRAINT checkpoint_size CHECK ((size >= 0))
+);
+
+COMMENT ON COLUMN public.checkpoint.size IS 'entries it covers: the position of the last of them';
+
+COMMENT ON COLUMN public.checkpoint.signed_note IS 'C2SP tlog-checkpoint';
+
+CREATE TABLE public.checkpoint_key (
+    volume_id integer NOT NULL,
+    seed bytea NOT NULL,
+    made_at timestamp with time zone DEFAULT now() NOT NULL,
+    CONSTRAINT checkpoint_key_seed CHECK ((octet_length(seed) = 32))
+);
+
+COMMENT ON COLUMN public.checkpoint_key.seed IS 'private: the Ed25519 seed of RFC 8032';
+
 
 COMMENT ON COLUMN public.entry.joined_links IS 'supervoxel ids, two a pair, that became accepted by this entry; likewise the three beside it';
 
@@ -871,6 +900,12 @@ ALTER TABLE ONLY public.neuron
 ALTER TABLE ONLY public.neuron
     ADD CONSTRAINT neuron_pkey PRIMARY KEY (volume_id, name);
 
+ALTER TABLE ONLY public.checkpoint_key
+    ADD CONSTRAINT checkpoint_key_pkey PRIMARY KEY (volume_id);
+
+ALTER TABLE ONLY public.checkpoint
+    ADD CONSTRAINT checkpoint_pkey PRIMARY KEY (volume_id, size);
+
 ALTER TABLE ONLY public.person
     ADD CONSTRAINT person_pkey PRIMARY KEY (handle);
 
@@ -1000,6 +1035,10 @@ CREATE TRIGGER task_step BEFORE UPDATE OF state ON public.task FOR EACH ROW WHEN
 ALTER TABLE ONLY public.base_block
     ADD CONSTRAINT base_block_volume FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id) DEFERRABLE INITIALLY DEFERRED;
 
+CREATE TRIGGER checkpoint_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.checkpoint FOR EACH STATEMENT EXECUTE FUNCTION public.checkpoint_is_final();
+
+CREATE TRIGGER checkpoint_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.checkpoint_key FOR EACH STATEMENT EXECUTE FUNCTION public.checkpoint_is_final();
+
 ALTER TABLE ONLY public.claim
     ADD CONSTRAINT claim_entry FOREIGN KEY (volume_id, "position") REFERENCES public.entry(volume_id, "position");
 
@@ -1025,6 +1064,12 @@ ALTER TABLE ONLY public.neuron
     ADD CONSTRAINT neuron_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
 
 ALTER TABLE ONLY public.person
+ALTER TABLE ONLY public.checkpoint_key
+    ADD CONSTRAINT checkpoint_key_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
+
+ALTER TABLE ONLY public.checkpoint
+    ADD CONSTRAINT checkpoint_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
+
     ADD CONSTRAINT person_added_by_fkey FOREIGN KEY (added_by) REFERENCES public.person(handle);
 
 ALTER TABLE ONLY public.review

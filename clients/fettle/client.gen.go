@@ -229,6 +229,27 @@ type Best struct {
 	Kind   *TaskKind `json:"kind,omitempty"`
 }
 
+// Checkpoint defines model for Checkpoint.
+type Checkpoint struct {
+	MadeAt time.Time `json:"made_at"`
+
+	// Note the signed checkpoint (C2SP tlog-checkpoint): what an auditor keeps
+	Note   string `json:"note"`
+	Origin string `json:"origin"`
+
+	// Root RFC 6962 tree head, hex
+	Root string `json:"root"`
+
+	// Size entries it covers
+	Size int64 `json:"size"`
+}
+
+// CheckpointKey defines model for CheckpointKey.
+type CheckpointKey struct {
+	// Key C2SP verifier key: name+hash+base64
+	Key string `json:"key"`
+}
+
 // Claim defines model for Claim.
 type Claim struct {
 	At      time.Time          `json:"at"`
@@ -577,6 +598,16 @@ type Problem struct {
 	Title                string                 `json:"title"`
 	Type                 string                 `json:"type"`
 	AdditionalProperties map[string]interface{} `json:"-"`
+}
+
+// Proof defines model for Proof.
+type Proof struct {
+	// Path hashes from the leaves upward, hex
+	Path []string `json:"path"`
+
+	// Root hex
+	Root string `json:"root"`
+	Size int64  `json:"size"`
 }
 
 // Proposal defines model for Proposal.
@@ -940,6 +971,9 @@ type SegmentID = ID
 // TaskNumber defines model for taskNumber.
 type TaskNumber = int64
 
+// TreeSize defines model for treeSize.
+type TreeSize = int64
+
 // VolumeName defines model for volumeName.
 type VolumeName = string
 
@@ -1005,6 +1039,23 @@ type ListNeuronsParams struct {
 type GetNeuronParams struct {
 	// At a position, or an RFC 3339 time
 	At *AsOf `form:"at,omitempty" json:"at,omitempty"`
+}
+
+// ProveConsistencyParams defines parameters for ProveConsistency.
+type ProveConsistencyParams struct {
+	// Older size of the older tree
+	Older int64 `form:"older" json:"older"`
+
+	// Size entries in the tree; all, when absent
+	Size *TreeSize `form:"size,omitempty" json:"size,omitempty"`
+}
+
+// ProveInclusionParams defines parameters for ProveInclusion.
+type ProveInclusionParams struct {
+	Position int64 `form:"position" json:"position"`
+
+	// Size entries in the tree; all, when absent
+	Size *TreeSize `form:"size,omitempty" json:"size,omitempty"`
 }
 
 // GetQualityParams defines parameters for GetQuality.
@@ -1464,6 +1515,21 @@ type ClientInterface interface {
 	// Corresponds with POST /v1/volumes/{volume}/assignments/withdraw (the `WithdrawTasks` operationId).
 	WithdrawTasks(ctx context.Context, volume VolumeName, body WithdrawTasksJSONRequestBody, reqEditors ...RequestEditorFn) (*http.Response, error)
 
+	// GetCheckpoint The newest signed checkpoint of the ledger
+	//
+	// Corresponds with GET /v1/volumes/{volume}/checkpoint (the `GetCheckpoint` operationId).
+	GetCheckpoint(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error)
+
+	// MakeCheckpoint Sign all entries that there are now
+	//
+	// Corresponds with POST /v1/volumes/{volume}/checkpoint (the `MakeCheckpoint` operationId).
+	MakeCheckpoint(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error)
+
+	// GetCheckpointKey The public key that checkpoints are checked with
+	//
+	// Corresponds with GET /v1/volumes/{volume}/checkpoint/key (the `GetCheckpointKey` operationId).
+	GetCheckpointKey(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error)
+
 	// ListClaims What you hold
 	//
 	// Corresponds with GET /v1/volumes/{volume}/claims (the `ListClaims` operationId).
@@ -1525,6 +1591,13 @@ type ClientInterface interface {
 	//
 	// Corresponds with GET /v1/volumes/{volume}/entries/{position} (the `GetEntry` operationId).
 	GetEntry(ctx context.Context, volume VolumeName, position int64, reqEditors ...RequestEditorFn) (*http.Response, error)
+
+	// ExportLedger The whole ledger as JSON Lines, which can be verified without this server
+	//
+	// a header; each entry's canonical bytes with their leaf hash, in order; the checkpoints, the last of which covers every entry and is made for the export
+	//
+	// Corresponds with GET /v1/volumes/{volume}/export (the `ExportLedger` operationId).
+	ExportLedger(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error)
 
 	// ListFindings What looks suspicious now, most gain first
 	//
@@ -1606,6 +1679,16 @@ type ClientInterface interface {
 	//
 	// Corresponds with GET /v1/volumes/{volume}/neurons/{name}/history (the `GetNeuronHistory` operationId).
 	GetNeuronHistory(ctx context.Context, volume VolumeName, name NeuronName, reqEditors ...RequestEditorFn) (*http.Response, error)
+
+	// ProveConsistency Proof that the tree of a size goes on from an older one
+	//
+	// Corresponds with GET /v1/volumes/{volume}/proofs/consistency (the `ProveConsistency` operationId).
+	ProveConsistency(ctx context.Context, volume VolumeName, params *ProveConsistencyParams, reqEditors ...RequestEditorFn) (*http.Response, error)
+
+	// ProveInclusion Proof that an entry is in the tree of a size; leaf number is position - 1
+	//
+	// Corresponds with GET /v1/volumes/{volume}/proofs/inclusion (the `ProveInclusion` operationId).
+	ProveInclusion(ctx context.Context, volume VolumeName, params *ProveInclusionParams, reqEditors ...RequestEditorFn) (*http.Response, error)
 
 	// GetQuality How well the segments meet the delivered truth
 	//
@@ -1989,6 +2072,51 @@ func (c *Client) WithdrawTasks(ctx context.Context, volume VolumeName, body With
 	return c.Client.Do(req)
 }
 
+// GetCheckpoint The newest signed checkpoint of the ledger
+//
+// Corresponds with GET /v1/volumes/{volume}/checkpoint (the `GetCheckpoint` operationId).
+func (c *Client) GetCheckpoint(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewGetCheckpointRequest(c.Server, volume)
+	if err != nil {
+		return nil, err
+	}
+	req = req.WithContext(ctx)
+	if err := c.applyEditors(ctx, req, reqEditors); err != nil {
+		return nil, err
+	}
+	return c.Client.Do(req)
+}
+
+// MakeCheckpoint Sign all entries that there are now
+//
+// Corresponds with POST /v1/volumes/{volume}/checkpoint (the `MakeCheckpoint` operationId).
+func (c *Client) MakeCheckpoint(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewMakeCheckpointRequest(c.Server, volume)
+	if err != nil {
+		return nil, err
+	}
+	req = req.WithContext(ctx)
+	if err := c.applyEditors(ctx, req, reqEditors); err != nil {
+		return nil, err
+	}
+	return c.Client.Do(req)
+}
+
+// GetCheckpointKey The public key that checkpoints are checked with
+//
+// Corresponds with GET /v1/volumes/{volume}/checkpoint/key (the `GetCheckpointKey` operationId).
+func (c *Client) GetCheckpointKey(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewGetCheckpointKeyRequest(c.Server, volume)
+	if err != nil {
+		return nil, err
+	}
+	req = req.WithContext(ctx)
+	if err := c.applyEditors(ctx, req, reqEditors); err != nil {
+		return nil, err
+	}
+	return c.Client.Do(req)
+}
+
 // ListClaims What you hold
 //
 // Corresponds with GET /v1/volumes/{volume}/claims (the `ListClaims` operationId).
@@ -2141,6 +2269,23 @@ func (c *Client) ListEntries(ctx context.Context, volume VolumeName, params *Lis
 // Corresponds with GET /v1/volumes/{volume}/entries/{position} (the `GetEntry` operationId).
 func (c *Client) GetEntry(ctx context.Context, volume VolumeName, position int64, reqEditors ...RequestEditorFn) (*http.Response, error) {
 	req, err := NewGetEntryRequest(c.Server, volume, position)
+	if err != nil {
+		return nil, err
+	}
+	req = req.WithContext(ctx)
+	if err := c.applyEditors(ctx, req, reqEditors); err != nil {
+		return nil, err
+	}
+	return c.Client.Do(req)
+}
+
+// ExportLedger The whole ledger as JSON Lines, which can be verified without this server
+//
+// a header; each entry's canonical bytes with their leaf hash, in order; the checkpoints, the last of which covers every entry and is made for the export
+//
+// Corresponds with GET /v1/volumes/{volume}/export (the `ExportLedger` operationId).
+func (c *Client) ExportLedger(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewExportLedgerRequest(c.Server, volume)
 	if err != nil {
 		return nil, err
 	}
@@ -2352,6 +2497,36 @@ func (c *Client) GetNeuron(ctx context.Context, volume VolumeName, name NeuronNa
 // Corresponds with GET /v1/volumes/{volume}/neurons/{name}/history (the `GetNeuronHistory` operationId).
 func (c *Client) GetNeuronHistory(ctx context.Context, volume VolumeName, name NeuronName, reqEditors ...RequestEditorFn) (*http.Response, error) {
 	req, err := NewGetNeuronHistoryRequest(c.Server, volume, name)
+	if err != nil {
+		return nil, err
+	}
+	req = req.WithContext(ctx)
+	if err := c.applyEditors(ctx, req, reqEditors); err != nil {
+		return nil, err
+	}
+	return c.Client.Do(req)
+}
+
+// ProveConsistency Proof that the tree of a size goes on from an older one
+//
+// Corresponds with GET /v1/volumes/{volume}/proofs/consistency (the `ProveConsistency` operationId).
+func (c *Client) ProveConsistency(ctx context.Context, volume VolumeName, params *ProveConsistencyParams, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewProveConsistencyRequest(c.Server, volume, params)
+	if err != nil {
+		return nil, err
+	}
+	req = req.WithContext(ctx)
+	if err := c.applyEditors(ctx, req, reqEditors); err != nil {
+		return nil, err
+	}
+	return c.Client.Do(req)
+}
+
+// ProveInclusion Proof that an entry is in the tree of a size; leaf number is position - 1
+//
+// Corresponds with GET /v1/volumes/{volume}/proofs/inclusion (the `ProveInclusion` operationId).
+func (c *Client) ProveInclusion(ctx context.Context, volume VolumeName, params *ProveInclusionParams, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewProveInclusionRequest(c.Server, volume, params)
 	if err != nil {
 		return nil, err
 	}
@@ -3093,6 +3268,108 @@ func NewWithdrawTasksRequestWithBody(server string, volume VolumeName, contentTy
 	return req, nil
 }
 
+// NewGetCheckpointRequest constructs an http.Request for the GetCheckpoint method
+func NewGetCheckpointRequest(server string, volume VolumeName) (*http.Request, error) {
+	var err error
+
+	var pathParam0 string
+
+	pathParam0, err = runtime.StyleParamWithOptions("simple", false, "volume", volume, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationPath, Type: "string", Format: ""})
+	if err != nil {
+		return nil, err
+	}
+
+	serverURL, err := url.Parse(server)
+	if err != nil {
+		return nil, err
+	}
+
+	operationPath := fmt.Sprintf("/v1/volumes/%s/checkpoint", pathParam0)
+	if operationPath[0] == '/' {
+		operationPath = "." + operationPath
+	}
+
+	queryURL, err := serverURL.Parse(operationPath)
+	if err != nil {
+		return nil, err
+	}
+
+	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
+	if err != nil {
+		return nil, err
+	}
+
+	return req, nil
+}
+
+// NewMakeCheckpointRequest constructs an http.Request for the MakeCheckpoint method
+func NewMakeCheckpointRequest(server string, volume VolumeName) (*http.Request, error) {
+	var err error
+
+	var pathParam0 string
+
+	pathParam0, err = runtime.StyleParamWithOptions("simple", false, "volume", volume, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationPath, Type: "string", Format: ""})
+	if err != nil {
+		return nil, err
+	}
+
+	serverURL, err := url.Parse(server)
+	if err != nil {
+		return nil, err
+	}
+
+	operationPath := fmt.Sprintf("/v1/volumes/%s/checkpoint", pathParam0)
+	if operationPath[0] == '/' {
+		operationPath = "." + operationPath
+	}
+
+	queryURL, err := serverURL.Parse(operationPath)
+	if err != nil {
+		return nil, err
+	}
+
+	req, err := http.NewRequest(http.MethodPost, queryURL.String(), nil)
+	if err != nil {
+		return nil, err
+	}
+
+	return req, nil
+}
+
+// NewGetCheckpointKeyRequest constructs an http.Request for the GetCheckpointKey method
+func NewGetCheckpointKeyRequest(server string, volume VolumeName) (*http.Request, error) {
+	var err error
+
+	var pathParam0 string
+
+	pathParam0, err = runtime.StyleParamWithOptions("simple", false, "volume", volume, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationPath, Type: "string", Format: ""})
+	if err != nil {
+		return nil, err
+	}
+
+	serverURL, err := url.Parse(server)
+	if err != nil {
+		return nil, err
+	}
+
+	operationPath := fmt.Sprintf("/v1/volumes/%s/checkpoint/key", pathParam0)
+	if operationPath[0] == '/' {
+		operationPath = "." + operationPath
+	}
+
+	queryURL, err := serverURL.Parse(operationPath)
+	if err != nil {
+		return nil, err
+	}
+
+	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
+	if err != nil {
+		return nil, err
+	}
+
+	return req, nil
+}
+
 // NewListClaimsRequest constructs an http.Request for the ListClaims method
 func NewListClaimsRequest(server string, volume VolumeName) (*http.Request, error) {
 	var err error
@@ -3505,6 +3782,40 @@ func NewGetEntryRequest(server string, volume VolumeName, position int64) (*http
 	}
 
 	operationPath := fmt.Sprintf("/v1/volumes/%s/entries/%s", pathParam0, pathParam1)
+	if operationPath[0] == '/' {
+		operationPath = "." + operationPath
+	}
+
+	queryURL, err := serverURL.Parse(operationPath)
+	if err != nil {
+		return nil, err
+	}
+
+	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
+	if err != nil {
+		return nil, err
+	}
+
+	return req, nil
+}
+
+// NewExportLedgerRequest constructs an http.Request for the ExportLedger method
+func NewExportLedgerRequest(server string, volume VolumeName) (*http.Request, error) {
+	var err error
+
+	var pathParam0 string
+
+	pathParam0, err = runtime.StyleParamWithOptions("simple", false, "volume", volume, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationPath, Type: "string", Format: ""})
+	if err != nil {
+		return nil, err
+	}
+
+	serverURL, err := url.Parse(server)
+	if err != nil {
+		return nil, err
+	}
+
+	operationPath := fmt.Sprintf("/v1/volumes/%s/export", pathParam0)
 	if operationPath[0] == '/' {
 		operationPath = "." + operationPath
 	}
@@ -4089,6 +4400,144 @@ func NewGetNeuronHistoryRequest(server string, volume VolumeName, name NeuronNam
 	queryURL, err := serverURL.Parse(operationPath)
 	if err != nil {
 		return nil, err
+	}
+
+	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
+	if err != nil {
+		return nil, err
+	}
+
+	return req, nil
+}
+
+// NewProveConsistencyRequest constructs an http.Request for the ProveConsistency method
+func NewProveConsistencyRequest(server string, volume VolumeName, params *ProveConsistencyParams) (*http.Request, error) {
+	var err error
+
+	var pathParam0 string
+
+	pathParam0, err = runtime.StyleParamWithOptions("simple", false, "volume", volume, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationPath, Type: "string", Format: ""})
+	if err != nil {
+		return nil, err
+	}
+
+	serverURL, err := url.Parse(server)
+	if err != nil {
+		return nil, err
+	}
+
+	operationPath := fmt.Sprintf("/v1/volumes/%s/proofs/consistency", pathParam0)
+	if operationPath[0] == '/' {
+		operationPath = "." + operationPath
+	}
+
+	queryURL, err := serverURL.Parse(operationPath)
+	if err != nil {
+		return nil, err
+	}
+
+	if params != nil {
+		// queryValues collects non-styled parameters (passthrough, JSON)
+		// that are safe to round-trip through url.Values.Encode().
+		queryValues := queryURL.Query()
+		// rawQueryFragments collects pre-encoded query fragments from
+		// styled parameters, preserving literal commas as delimiters
+		// per the OpenAPI spec (e.g. "color=blue,black,brown").
+		var rawQueryFragments []string
+
+		if queryFrag, err := runtime.StyleParamWithOptions("form", true, "older", params.Older, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "integer", Format: "int64"}); err != nil {
+			return nil, err
+		} else {
+			for _, qp := range strings.Split(queryFrag, "&") {
+				rawQueryFragments = append(rawQueryFragments, qp)
+			}
+		}
+
+		if params.Size != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "size", *params.Size, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "integer", Format: "int64"}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
+		if encoded := queryValues.Encode(); encoded != "" {
+			rawQueryFragments = append(rawQueryFragments, encoded)
+		}
+		queryURL.RawQuery = strings.Join(rawQueryFragments, "&")
+	}
+
+	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
+	if err != nil {
+		return nil, err
+	}
+
+	return req, nil
+}
+
+// NewProveInclusionRequest constructs an http.Request for the ProveInclusion method
+func NewProveInclusionRequest(server string, volume VolumeName, params *ProveInclusionParams) (*http.Request, error) {
+	var err error
+
+	var pathParam0 string
+
+	pathParam0, err = runtime.StyleParamWithOptions("simple", false, "volume", volume, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationPath, Type: "string", Format: ""})
+	if err != nil {
+		return nil, err
+	}
+
+	serverURL, err := url.Parse(server)
+	if err != nil {
+		return nil, err
+	}
+
+	operationPath := fmt.Sprintf("/v1/volumes/%s/proofs/inclusion", pathParam0)
+	if operationPath[0] == '/' {
+		operationPath = "." + operationPath
+	}
+
+	queryURL, err := serverURL.Parse(operationPath)
+	if err != nil {
+		return nil, err
+	}
+
+	if params != nil {
+		// queryValues collects non-styled parameters (passthrough, JSON)
+		// that are safe to round-trip through url.Values.Encode().
+		queryValues := queryURL.Query()
+		// rawQueryFragments collects pre-encoded query fragments from
+		// styled parameters, preserving literal commas as delimiters
+		// per the OpenAPI spec (e.g. "color=blue,black,brown").
+		var rawQueryFragments []string
+
+		if queryFrag, err := runtime.StyleParamWithOptions("form", true, "position", params.Position, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "integer", Format: "int64"}); err != nil {
+			return nil, err
+		} else {
+			for _, qp := range strings.Split(queryFrag, "&") {
+				rawQueryFragments = append(rawQueryFragments, qp)
+			}
+		}
+
+		if params.Size != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "size", *params.Size, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "integer", Format: "int64"}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
+		if encoded := queryValues.Encode(); encoded != "" {
+			rawQueryFragments = append(rawQueryFragments, encoded)
+		}
+		queryURL.RawQuery = strings.Join(rawQueryFragments, "&")
 	}
 
 	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
@@ -5152,6 +5601,27 @@ type ClientWithResponsesInterface interface {
 	// Corresponds with POST /v1/volumes/{volume}/assignments/withdraw (the `WithdrawTasks` operationId).
 	WithdrawTasksWithResponse(ctx context.Context, volume VolumeName, body WithdrawTasksJSONRequestBody, reqEditors ...RequestEditorFn) (*WithdrawTasksResponse, error)
 
+	// GetCheckpointWithResponse The newest signed checkpoint of the ledger
+	//
+	// Returns a wrapper object for the known response body format(s).
+	//
+	// Corresponds with GET /v1/volumes/{volume}/checkpoint (the `GetCheckpoint` operationId).
+	GetCheckpointWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*GetCheckpointResponse, error)
+
+	// MakeCheckpointWithResponse Sign all entries that there are now
+	//
+	// Returns a wrapper object for the known response body format(s).
+	//
+	// Corresponds with POST /v1/volumes/{volume}/checkpoint (the `MakeCheckpoint` operationId).
+	MakeCheckpointWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*MakeCheckpointResponse, error)
+
+	// GetCheckpointKeyWithResponse The public key that checkpoints are checked with
+	//
+	// Returns a wrapper object for the known response body format(s).
+	//
+	// Corresponds with GET /v1/volumes/{volume}/checkpoint/key (the `GetCheckpointKey` operationId).
+	GetCheckpointKeyWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*GetCheckpointKeyResponse, error)
+
 	// ListClaimsWithResponse What you hold
 	//
 	// Returns a wrapper object for the known response body format(s).
@@ -5221,6 +5691,15 @@ type ClientWithResponsesInterface interface {
 	//
 	// Corresponds with GET /v1/volumes/{volume}/entries/{position} (the `GetEntry` operationId).
 	GetEntryWithResponse(ctx context.Context, volume VolumeName, position int64, reqEditors ...RequestEditorFn) (*GetEntryResponse, error)
+
+	// ExportLedgerWithResponse The whole ledger as JSON Lines, which can be verified without this server
+	//
+	// a header; each entry's canonical bytes with their leaf hash, in order; the checkpoints, the last of which covers every entry and is made for the export
+	//
+	// Returns a wrapper object for the known response body format(s).
+	//
+	// Corresponds with GET /v1/volumes/{volume}/export (the `ExportLedger` operationId).
+	ExportLedgerWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*ExportLedgerResponse, error)
 
 	// ListFindingsWithResponse What looks suspicious now, most gain first
 	//
@@ -5312,6 +5791,20 @@ type ClientWithResponsesInterface interface {
 	//
 	// Corresponds with GET /v1/volumes/{volume}/neurons/{name}/history (the `GetNeuronHistory` operationId).
 	GetNeuronHistoryWithResponse(ctx context.Context, volume VolumeName, name NeuronName, reqEditors ...RequestEditorFn) (*GetNeuronHistoryResponse, error)
+
+	// ProveConsistencyWithResponse Proof that the tree of a size goes on from an older one
+	//
+	// Returns a wrapper object for the known response body format(s).
+	//
+	// Corresponds with GET /v1/volumes/{volume}/proofs/consistency (the `ProveConsistency` operationId).
+	ProveConsistencyWithResponse(ctx context.Context, volume VolumeName, params *ProveConsistencyParams, reqEditors ...RequestEditorFn) (*ProveConsistencyResponse, error)
+
+	// ProveInclusionWithResponse Proof that an entry is in the tree of a size; leaf number is position - 1
+	//
+	// Returns a wrapper object for the known response body format(s).
+	//
+	// Corresponds with GET /v1/volumes/{volume}/proofs/inclusion (the `ProveInclusion` operationId).
+	ProveInclusionWithResponse(ctx context.Context, volume VolumeName, params *ProveInclusionParams, reqEditors ...RequestEditorFn) (*ProveInclusionResponse, error)
 
 	// GetQualityWithResponse How well the segments meet the delivered truth
 	//
@@ -6016,6 +6509,150 @@ func (r WithdrawTasksResponse) ContentType() string {
 	return ""
 }
 
+type GetCheckpointResponse struct {
+	Body         []byte
+	HTTPResponse *http.Response
+	// JSON200 the response for an HTTP 200 `application/json` response
+	JSON200 *Checkpoint
+	// ApplicationproblemJSONDefault the response for an HTTP default `application/problem+json` response
+	ApplicationproblemJSONDefault *Problem
+}
+
+// GetJSON200 returns the response for an HTTP 200 `application/json` response
+func (r GetCheckpointResponse) GetJSON200() *Checkpoint {
+	return r.JSON200
+}
+
+// GetApplicationproblemJSONDefault returns the response for an HTTP default `application/problem+json` response
+func (r GetCheckpointResponse) GetApplicationproblemJSONDefault() *Problem {
+	return r.ApplicationproblemJSONDefault
+}
+
+// GetBody returns the raw response body bytes
+func (r GetCheckpointResponse) GetBody() []byte {
+	return r.Body
+}
+
+// Status returns HTTPResponse.Status
+func (r GetCheckpointResponse) Status() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Status
+	}
+	return http.StatusText(0)
+}
+
+// StatusCode returns HTTPResponse.StatusCode
+func (r GetCheckpointResponse) StatusCode() int {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.StatusCode
+	}
+	return 0
+}
+
+// ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
+func (r GetCheckpointResponse) ContentType() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Header.Get("Content-Type")
+	}
+	return ""
+}
+
+type MakeCheckpointResponse struct {
+	Body         []byte
+	HTTPResponse *http.Response
+	// JSON200 the response for an HTTP 200 `application/json` response
+	JSON200 *Checkpoint
+	// ApplicationproblemJSONDefault the response for an HTTP default `application/problem+json` response
+	ApplicationproblemJSONDefault *Problem
+}
+
+// GetJSON200 returns the response for an HTTP 200 `application/json` response
+func (r MakeCheckpointResponse) GetJSON200() *Checkpoint {
+	return r.JSON200
+}
+
+// GetApplicationproblemJSONDefault returns the response for an HTTP default `application/problem+json` response
+func (r MakeCheckpointResponse) GetApplicationproblemJSONDefault() *Problem {
+	return r.ApplicationproblemJSONDefault
+}
+
+// GetBody returns the raw response body bytes
+func (r MakeCheckpointResponse) GetBody() []byte {
+	return r.Body
+}
+
+// Status returns HTTPResponse.Status
+func (r MakeCheckpointResponse) Status() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Status
+	}
+	return http.StatusText(0)
+}
+
+// StatusCode returns HTTPResponse.StatusCode
+func (r MakeCheckpointResponse) StatusCode() int {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.StatusCode
+	}
+	return 0
+}
+
+// ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
+func (r MakeCheckpointResponse) ContentType() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Header.Get("Content-Type")
+	}
+	return ""
+}
+
+type GetCheckpointKeyResponse struct {
+	Body         []byte
+	HTTPResponse *http.Response
+	// JSON200 the response for an HTTP 200 `application/json` response
+	JSON200 *CheckpointKey
+	// ApplicationproblemJSONDefault the response for an HTTP default `application/problem+json` response
+	ApplicationproblemJSONDefault *Problem
+}
+
+// GetJSON200 returns the response for an HTTP 200 `application/json` response
+func (r GetCheckpointKeyResponse) GetJSON200() *CheckpointKey {
+	return r.JSON200
+}
+
+// GetApplicationproblemJSONDefault returns the response for an HTTP default `application/problem+json` response
+func (r GetCheckpointKeyResponse) GetApplicationproblemJSONDefault() *Problem {
+	return r.ApplicationproblemJSONDefault
+}
+
+// GetBody returns the raw response body bytes
+func (r GetCheckpointKeyResponse) GetBody() []byte {
+	return r.Body
+}
+
+// Status returns HTTPResponse.Status
+func (r GetCheckpointKeyResponse) Status() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Status
+	}
+	return http.StatusText(0)
+}
+
+// StatusCode returns HTTPResponse.StatusCode
+func (r GetCheckpointKeyResponse) StatusCode() int {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.StatusCode
+	}
+	return 0
+}
+
+// ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
+func (r GetCheckpointKeyResponse) ContentType() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Header.Get("Content-Type")
+	}
+	return ""
+}
+
 type ListClaimsResponse struct {
 	Body         []byte
 	HTTPResponse *http.Response
@@ -6346,6 +6983,47 @@ func (r GetEntryResponse) StatusCode() int {
 
 // ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
 func (r GetEntryResponse) ContentType() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Header.Get("Content-Type")
+	}
+	return ""
+}
+
+type ExportLedgerResponse struct {
+	Body         []byte
+	HTTPResponse *http.Response
+	// ApplicationproblemJSONDefault the response for an HTTP default `application/problem+json` response
+	ApplicationproblemJSONDefault *Problem
+}
+
+// GetApplicationproblemJSONDefault returns the response for an HTTP default `application/problem+json` response
+func (r ExportLedgerResponse) GetApplicationproblemJSONDefault() *Problem {
+	return r.ApplicationproblemJSONDefault
+}
+
+// GetBody returns the raw response body bytes
+func (r ExportLedgerResponse) GetBody() []byte {
+	return r.Body
+}
+
+// Status returns HTTPResponse.Status
+func (r ExportLedgerResponse) Status() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Status
+	}
+	return http.StatusText(0)
+}
+
+// StatusCode returns HTTPResponse.StatusCode
+func (r ExportLedgerResponse) StatusCode() int {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.StatusCode
+	}
+	return 0
+}
+
+// ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
+func (r ExportLedgerResponse) ContentType() string {
 	if r.HTTPResponse != nil {
 		return r.HTTPResponse.Header.Get("Content-Type")
 	}
@@ -6778,6 +7456,102 @@ func (r GetNeuronHistoryResponse) StatusCode() int {
 
 // ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
 func (r GetNeuronHistoryResponse) ContentType() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Header.Get("Content-Type")
+	}
+	return ""
+}
+
+type ProveConsistencyResponse struct {
+	Body         []byte
+	HTTPResponse *http.Response
+	// JSON200 the response for an HTTP 200 `application/json` response
+	JSON200 *Proof
+	// ApplicationproblemJSONDefault the response for an HTTP default `application/problem+json` response
+	ApplicationproblemJSONDefault *Problem
+}
+
+// GetJSON200 returns the response for an HTTP 200 `application/json` response
+func (r ProveConsistencyResponse) GetJSON200() *Proof {
+	return r.JSON200
+}
+
+// GetApplicationproblemJSONDefault returns the response for an HTTP default `application/problem+json` response
+func (r ProveConsistencyResponse) GetApplicationproblemJSONDefault() *Problem {
+	return r.ApplicationproblemJSONDefault
+}
+
+// GetBody returns the raw response body bytes
+func (r ProveConsistencyResponse) GetBody() []byte {
+	return r.Body
+}
+
+// Status returns HTTPResponse.Status
+func (r ProveConsistencyResponse) Status() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Status
+	}
+	return http.StatusText(0)
+}
+
+// StatusCode returns HTTPResponse.StatusCode
+func (r ProveConsistencyResponse) StatusCode() int {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.StatusCode
+	}
+	return 0
+}
+
+// ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
+func (r ProveConsistencyResponse) ContentType() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Header.Get("Content-Type")
+	}
+	return ""
+}
+
+type ProveInclusionResponse struct {
+	Body         []byte
+	HTTPResponse *http.Response
+	// JSON200 the response for an HTTP 200 `application/json` response
+	JSON200 *Proof
+	// ApplicationproblemJSONDefault the response for an HTTP default `application/problem+json` response
+	ApplicationproblemJSONDefault *Problem
+}
+
+// GetJSON200 returns the response for an HTTP 200 `application/json` response
+func (r ProveInclusionResponse) GetJSON200() *Proof {
+	return r.JSON200
+}
+
+// GetApplicationproblemJSONDefault returns the response for an HTTP default `application/problem+json` response
+func (r ProveInclusionResponse) GetApplicationproblemJSONDefault() *Problem {
+	return r.ApplicationproblemJSONDefault
+}
+
+// GetBody returns the raw response body bytes
+func (r ProveInclusionResponse) GetBody() []byte {
+	return r.Body
+}
+
+// Status returns HTTPResponse.Status
+func (r ProveInclusionResponse) Status() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Status
+	}
+	return http.StatusText(0)
+}
+
+// StatusCode returns HTTPResponse.StatusCode
+func (r ProveInclusionResponse) StatusCode() int {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.StatusCode
+	}
+	return 0
+}
+
+// ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
+func (r ProveInclusionResponse) ContentType() string {
 	if r.HTTPResponse != nil {
 		return r.HTTPResponse.Header.Get("Content-Type")
 	}
@@ -7677,6 +8451,45 @@ func (c *ClientWithResponses) WithdrawTasksWithResponse(ctx context.Context, vol
 	return ParseWithdrawTasksResponse(rsp)
 }
 
+// GetCheckpointWithResponse The newest signed checkpoint of the ledger
+//
+// Returns a wrapper object for the known response body format(s).
+//
+// Corresponds with GET /v1/volumes/{volume}/checkpoint (the `GetCheckpoint` operationId).
+func (c *ClientWithResponses) GetCheckpointWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*GetCheckpointResponse, error) {
+	rsp, err := c.GetCheckpoint(ctx, volume, reqEditors...)
+	if err != nil {
+		return nil, err
+	}
+	return ParseGetCheckpointResponse(rsp)
+}
+
+// MakeCheckpointWithResponse Sign all entries that there are now
+//
+// Returns a wrapper object for the known response body format(s).
+//
+// Corresponds with POST /v1/volumes/{volume}/checkpoint (the `MakeCheckpoint` operationId).
+func (c *ClientWithResponses) MakeCheckpointWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*MakeCheckpointResponse, error) {
+	rsp, err := c.MakeCheckpoint(ctx, volume, reqEditors...)
+	if err != nil {
+		return nil, err
+	}
+	return ParseMakeCheckpointResponse(rsp)
+}
+
+// GetCheckpointKeyWithResponse The public key that checkpoints are checked with
+//
+// Returns a wrapper object for the known response body format(s).
+//
+// Corresponds with GET /v1/volumes/{volume}/checkpoint/key (the `GetCheckpointKey` operationId).
+func (c *ClientWithResponses) GetCheckpointKeyWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*GetCheckpointKeyResponse, error) {
+	rsp, err := c.GetCheckpointKey(ctx, volume, reqEditors...)
+	if err != nil {
+		return nil, err
+	}
+	return ParseGetCheckpointKeyResponse(rsp)
+}
+
 // ListClaimsWithResponse What you hold
 //
 // Returns a wrapper object for the known response body format(s).
@@ -7805,6 +8618,21 @@ func (c *ClientWithResponses) GetEntryWithResponse(ctx context.Context, volume V
 		return nil, err
 	}
 	return ParseGetEntryResponse(rsp)
+}
+
+// ExportLedgerWithResponse The whole ledger as JSON Lines, which can be verified without this server
+//
+// a header; each entry's canonical bytes with their leaf hash, in order; the checkpoints, the last of which covers every entry and is made for the export
+//
+// Returns a wrapper object for the known response body format(s).
+//
+// Corresponds with GET /v1/volumes/{volume}/export (the `ExportLedger` operationId).
+func (c *ClientWithResponses) ExportLedgerWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*ExportLedgerResponse, error) {
+	rsp, err := c.ExportLedger(ctx, volume, reqEditors...)
+	if err != nil {
+		return nil, err
+	}
+	return ParseExportLedgerResponse(rsp)
 }
 
 // ListFindingsWithResponse What looks suspicious now, most gain first
@@ -7974,6 +8802,32 @@ func (c *ClientWithResponses) GetNeuronHistoryWithResponse(ctx context.Context, 
 		return nil, err
 	}
 	return ParseGetNeuronHistoryResponse(rsp)
+}
+
+// ProveConsistencyWithResponse Proof that the tree of a size goes on from an older one
+//
+// Returns a wrapper object for the known response body format(s).
+//
+// Corresponds with GET /v1/volumes/{volume}/proofs/consistency (the `ProveConsistency` operationId).
+func (c *ClientWithResponses) ProveConsistencyWithResponse(ctx context.Context, volume VolumeName, params *ProveConsistencyParams, reqEditors ...RequestEditorFn) (*ProveConsistencyResponse, error) {
+	rsp, err := c.ProveConsistency(ctx, volume, params, reqEditors...)
+	if err != nil {
+		return nil, err
+	}
+	return ParseProveConsistencyResponse(rsp)
+}
+
+// ProveInclusionWithResponse Proof that an entry is in the tree of a size; leaf number is position - 1
+//
+// Returns a wrapper object for the known response body format(s).
+//
+// Corresponds with GET /v1/volumes/{volume}/proofs/inclusion (the `ProveInclusion` operationId).
+func (c *ClientWithResponses) ProveInclusionWithResponse(ctx context.Context, volume VolumeName, params *ProveInclusionParams, reqEditors ...RequestEditorFn) (*ProveInclusionResponse, error) {
+	rsp, err := c.ProveInclusion(ctx, volume, params, reqEditors...)
+	if err != nil {
+		return nil, err
+	}
+	return ParseProveInclusionResponse(rsp)
 }
 
 // GetQualityWithResponse How well the segments meet the delivered truth
@@ -8606,6 +9460,105 @@ func ParseWithdrawTasksResponse(rsp *http.Response) (*WithdrawTasksResponse, err
 	return response, nil
 }
 
+// ParseGetCheckpointResponse parses an HTTP response from a GetCheckpointWithResponse call
+func ParseGetCheckpointResponse(rsp *http.Response) (*GetCheckpointResponse, error) {
+	bodyBytes, err := io.ReadAll(rsp.Body)
+	defer func() { _ = rsp.Body.Close() }()
+	if err != nil {
+		return nil, err
+	}
+
+	response := &GetCheckpointResponse{
+		Body:         bodyBytes,
+		HTTPResponse: rsp,
+	}
+
+	switch {
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
+		var dest Checkpoint
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.JSON200 = &dest
+
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
+		var dest Problem
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.ApplicationproblemJSONDefault = &dest
+
+	}
+
+	return response, nil
+}
+
+// ParseMakeCheckpointResponse parses an HTTP response from a MakeCheckpointWithResponse call
+func ParseMakeCheckpointResponse(rsp *http.Response) (*MakeCheckpointResponse, error) {
+	bodyBytes, err := io.ReadAll(rsp.Body)
+	defer func() { _ = rsp.Body.Close() }()
+	if err != nil {
+		return nil, err
+	}
+
+	response := &MakeCheckpointResponse{
+		Body:         bodyBytes,
+		HTTPResponse: rsp,
+	}
+
+	switch {
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
+		var dest Checkpoint
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.JSON200 = &dest
+
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
+		var dest Problem
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.ApplicationproblemJSONDefault = &dest
+
+	}
+
+	return response, nil
+}
+
+// ParseGetCheckpointKeyResponse parses an HTTP response from a GetCheckpointKeyWithResponse call
+func ParseGetCheckpointKeyResponse(rsp *http.Response) (*GetCheckpointKeyResponse, error) {
+	bodyBytes, err := io.ReadAll(rsp.Body)
+	defer func() { _ = rsp.Body.Close() }()
+	if err != nil {
+		return nil, err
+	}
+
+	response := &GetCheckpointKeyResponse{
+		Body:         bodyBytes,
+		HTTPResponse: rsp,
+	}
+
+	switch {
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
+		var dest CheckpointKey
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.JSON200 = &dest
+
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
+		var dest Problem
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.ApplicationproblemJSONDefault = &dest
+
+	}
+
+	return response, nil
+}
+
 // ParseListClaimsResponse parses an HTTP response from a ListClaimsWithResponse call
 func ParseListClaimsResponse(rsp *http.Response) (*ListClaimsResponse, error) {
 	bodyBytes, err := io.ReadAll(rsp.Body)
@@ -8825,6 +9778,32 @@ func ParseGetEntryResponse(rsp *http.Response) (*GetEntryResponse, error) {
 		}
 		response.JSON200 = &dest
 
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
+		var dest Problem
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.ApplicationproblemJSONDefault = &dest
+
+	}
+
+	return response, nil
+}
+
+// ParseExportLedgerResponse parses an HTTP response from a ExportLedgerWithResponse call
+func ParseExportLedgerResponse(rsp *http.Response) (*ExportLedgerResponse, error) {
+	bodyBytes, err := io.ReadAll(rsp.Body)
+	defer func() { _ = rsp.Body.Close() }()
+	if err != nil {
+		return nil, err
+	}
+
+	response := &ExportLedgerResponse{
+		Body:         bodyBytes,
+		HTTPResponse: rsp,
+	}
+
+	switch {
 	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
 		var dest Problem
 		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
@@ -9117,6 +10096,72 @@ func ParseGetNeuronHistoryResponse(rsp *http.Response) (*GetNeuronHistoryRespons
 	switch {
 	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
 		var dest Entries
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.JSON200 = &dest
+
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
+		var dest Problem
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.ApplicationproblemJSONDefault = &dest
+
+	}
+
+	return response, nil
+}
+
+// ParseProveConsistencyResponse parses an HTTP response from a ProveConsistencyWithResponse call
+func ParseProveConsistencyResponse(rsp *http.Response) (*ProveConsistencyResponse, error) {
+	bodyBytes, err := io.ReadAll(rsp.Body)
+	defer func() { _ = rsp.Body.Close() }()
+	if err != nil {
+		return nil, err
+	}
+
+	response := &ProveConsistencyResponse{
+		Body:         bodyBytes,
+		HTTPResponse: rsp,
+	}
+
+	switch {
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
+		var dest Proof
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.JSON200 = &dest
+
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
+		var dest Problem
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.ApplicationproblemJSONDefault = &dest
+
+	}
+
+	return response, nil
+}
+
+// ParseProveInclusionResponse parses an HTTP response from a ProveInclusionWithResponse call
+func ParseProveInclusionResponse(rsp *http.Response) (*ProveInclusionResponse, error) {
+	bodyBytes, err := io.ReadAll(rsp.Body)
+	defer func() { _ = rsp.Body.Close() }()
+	if err != nil {
+		return nil, err
+	}
+
+	response := &ProveInclusionResponse{
+		Body:         bodyBytes,
+		HTTPResponse: rsp,
+	}
+
+	switch {
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
+		var dest Proof
 		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
 			return nil, err
 		}

@@ -81,6 +81,11 @@ func Open(signed []byte, origin string, known ...note.Verifier) (Checkpoint, err
 		return Checkpoint{}, fault.New(fault.Invalid, "checkpoint-unsigned", "no known key has signed this checkpoint").
 			WithNext("give the log's public key, and the checkpoint as it was published").Wrap(err)
 	}
+	for _, sig := range append(n.Sigs, n.UnverifiedSigs...) {
+		if _, err := base64.StdEncoding.Strict().DecodeString(sig.Base64); err != nil {
+			return Checkpoint{}, fault.New(fault.Invalid, "checkpoint-malformed", "a signature's last bits are not zero").Wrap(err)
+		}
+	}
 	c, err := ParseCheckpoint(n.Text)
 	if err != nil {
 		return Checkpoint{}, err
