@@ -3,6 +3,7 @@ package ledger
 import (
 	"context"
 	"errors"
+	"runtime"
 	"sync"
 	"time"
 
@@ -92,24 +93,48 @@ func (v *Volume) already(ctx context.Context, d Draft, refusal error) (Entry, er
 	return Entry{}, errors.Join(refusal, err)
 }
 
+// gatherMost bounds how long the poster waits for those whom it has just answered to line up again. Without it, half of many
+// writers would always wait for the other half, and groups would be half as large.
+const gatherMost = 300 * time.Microsecond
+
+// take waits until as many wait as are expected, or no longer, and takes them off the line. When nobody waits the poster ends.
+func (l *postLine) take(expected int) []*waiting {
+	for until := time.Now().Add(gatherMost); expected > 0; runtime.Gosched() {
+		l.mu.Lock()
+		n := len(l.waiting)
+		l.mu.Unlock()
+		if n >= expected || time.Now().After(until) {
+			break
+		}
+	}
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	group := l.waiting
+	if len(group) > groupLimit {
+		group = group[:groupLimit:groupLimit]
+	}
+	if l.waiting = l.waiting[len(group):]; len(group) == 0 {
+		l.waiting, l.posting = nil, false
+	}
+	return group
+}
+
 // postWaiting empties the line, group by group.
 func (v *Volume) postWaiting() {
+	expected := 0
 	for {
-		v.line.mu.Lock()
-		group := v.line.waiting
-		if len(group) > groupLimit {
-			group = group[:groupLimit:groupLimit]
-		}
-		v.line.waiting = v.line.waiting[len(group):]
+		group := v.line.take(expected)
 		if len(group) == 0 {
-			v.line.waiting, v.line.posting = nil, false
-			v.line.mu.Unlock()
 			return
 		}
-		v.line.mu.Unlock()
 		v.mu.Lock()
 		v.postGroup(group)
 		v.mu.Unlock()
+		if expected = 0; len(group) > 1 {
+			v.line.mu.Lock()
+			expected = min(len(group)+len(v.line.waiting), groupLimit)
+			v.line.mu.Unlock()
+		}
 	}
 }
 

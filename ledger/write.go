@@ -107,10 +107,7 @@ func queuePieces(b *pgx.Batch, volume int32, changes []*change) {
 		}
 	}
 	if len(lo) > 0 {
-		b.Queue(`
-			update piece p set to_position = u.until
-			  from unnest($2::bigint[], $3::bigint[], $4::bigint[]) u (lo, since, until)
-			 where p.volume_id = $1 and p.lo = u.lo and p.from_position = u.since`, volume, lo, from, to)
+		b.Queue(`select ledger_close($1, $2, $3, $4)`, volume, lo, from, to)
 	}
 	if len(fresh) == 0 {
 		return
@@ -155,9 +152,7 @@ func queueSegments(b *pgx.Batch, volume int32, changes []*change) {
 		}
 	}
 	if len(ids) > 0 {
-		b.Queue(`
-			update segment s set retired = u.retired from unnest($2::bigint[], $3::bigint[]) u (id, retired)
-			 where s.volume_id = $1 and s.segment_id = u.id`, volume, ids, retired)
+		b.Queue(`select ledger_retire($1, $2, $3)`, volume, ids, retired)
 	}
 	n := len(fresh)
 	numbers := make([][]int64, 7) // group, born, supervoxels, voxels, in, out, nuclei

@@ -16,7 +16,7 @@ comment on column head.minted is 'how many segment ids have been drawn from the 
 comment on column head.groups is 'the next internal group number; numbers below the count of base segments are theirs';
 
 create table entry (
-    volume_id       int         not null references volume (volume_id),
+    volume_id       int         not null,
     position        bigint      not null,
     entry_id        uuid        not null,
     kind            text        not null,
@@ -67,15 +67,21 @@ create trigger entry_is_final before update or delete or truncate on entry
     for each statement execute function entry_is_final();
 revoke delete, truncate on entry from current_user;
 
--- Positions are 1, 2, 3 ... without a gap: every new row stands on its predecessor. Once a statement, not once a
--- row, so that a group of entries pays for it once.
-create function entry_gapless() returns trigger language plpgsql as $$
+-- Positions are 1, 2, 3 ... without a gap: the rows of a statement follow each other, the first stands on its predecessor, and the
+-- volume's head has been moved over the last. Once a statement, not once a row, so that a group of entries pays for it once. (Plans made while a table is young would read all
+-- of it, and stay so while it grows; hence the settings, here and below.)
+create function entry_gapless() returns trigger language plpgsql set enable_seqscan = off set enable_bitmapscan = off as $$
+declare
+    run record;
 begin
-    if exists (select from added a
-               where a.position > 1
-                 and not exists (select from entry e where e.volume_id = a.volume_id and e.position = a.position - 1)) then
-        raise exception 'positions of a volume have no gap' using errcode = 'FE002', constraint = 'entry_gapless';
-    end if;
+    for run in select volume_id, min(position) as lo, max(position) as hi, count(*) as n from added group by volume_id loop
+        if run.hi - run.lo + 1 <> run.n
+           or run.lo > 1 and not exists (select from entry e where e.volume_id = run.volume_id and e.position = run.lo - 1) then
+            raise exception 'positions of a volume have no gap' using errcode = 'FE002', constraint = 'entry_gapless';
+        elsif not exists (select from head h where h.volume_id = run.volume_id and h.position >= run.hi) then
+            raise exception 'the head of the volume is moved first' using errcode = 'FE009', constraint = 'entry_below_head';
+        end if;
+    end loop;
     return null;
 end $$;
 create trigger entry_gapless after insert on entry
@@ -103,8 +109,9 @@ create table segment (
 comment on column segment.born is 'the position that made it; 0 for the delivery';
 comment on column segment.retired is 'the position that changed it into other segments; null while it is current';
 comment on column segment.bounds_nm is 'smallest x, y, z and largest x, y, z of its supervoxels, nm';
-create unique index segment_current on segment (volume_id, grp) where retired is null;
-create index segment_by_group on segment (volume_id, grp, born);
+-- A group is one segment after another. (That only the last is current is not a unique index of its own: a large neuron's group is
+-- reborn with every merge, and the check would wade through all its dead entries. Reconcile holds it.)
+create unique index segment_of_group on segment (volume_id, grp, born);
 
 -- Which group an ordinal range belongs to, and from which position up to which. Ordinals that no row covers belong
 -- to the group of their own base segment.
@@ -128,6 +135,22 @@ create table piece (
 -- Rows are appended as positions grow, so summaries of stretches of pages find those that changed after one.
 create index piece_by_from on piece using brin (from_position);
 create index piece_by_to on piece using brin (to_position);
+
+-- End segments and pieces that a group of entries changed. Row by row, by the whole primary key: a join planned while the tables
+-- were young would go through all of them, and stay so.
+create function ledger_retire(volume int, ids bigint[], positions bigint[]) returns void language plpgsql set enable_seqscan = off as $$
+begin
+    for i in 1 .. cardinality(ids) loop
+        update segment set retired = positions[i] where volume_id = volume and segment_id = ids[i];
+    end loop;
+end $$;
+create function ledger_close(volume int, los bigint[], since bigint[], positions bigint[]) returns void language plpgsql
+    set enable_seqscan = off as $$
+begin
+    for i in 1 .. cardinality(los) loop
+        update piece set to_position = positions[i] where volume_id = volume and lo = los[i] and from_position = since[i];
+    end loop;
+end $$;
 
 -- A cell that people follow by name, pinned to a supervoxel.
 create table neuron (

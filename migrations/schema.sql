@@ -185,13 +185,20 @@ end $$;
 
 CREATE FUNCTION public.entry_gapless() RETURNS trigger
     LANGUAGE plpgsql
+    SET enable_seqscan TO 'off'
+    SET enable_bitmapscan TO 'off'
     AS $$
+declare
+    run record;
 begin
-    if exists (select from added a
-               where a.position > 1
-                 and not exists (select from entry e where e.volume_id = a.volume_id and e.position = a.position - 1)) then
-        raise exception 'positions of a volume have no gap' using errcode = 'FE002', constraint = 'entry_gapless';
-    end if;
+    for run in select volume_id, min(position) as lo, max(position) as hi, count(*) as n from added group by volume_id loop
+        if run.hi - run.lo + 1 <> run.n
+           or run.lo > 1 and not exists (select from entry e where e.volume_id = run.volume_id and e.position = run.lo - 1) then
+            raise exception 'positions of a volume have no gap' using errcode = 'FE002', constraint = 'entry_gapless';
+        elsif not exists (select from head h where h.volume_id = run.volume_id and h.position >= run.hi) then
+            raise exception 'the head of the volume is moved first' using errcode = 'FE009', constraint = 'entry_below_head';
+        end if;
+    end loop;
     return null;
 end $$;
 
@@ -249,6 +256,26 @@ begin
     if not found then
         raise exception 'the volume has moved on from position %', seen using errcode = 'FE003', constraint = 'ledger_advance';
     end if;
+end $$;
+
+CREATE FUNCTION public.ledger_close(volume integer, los bigint[], since bigint[], positions bigint[]) RETURNS void
+    LANGUAGE plpgsql
+    SET enable_seqscan TO 'off'
+    AS $$
+begin
+    for i in 1 .. cardinality(los) loop
+        update piece set to_position = positions[i] where volume_id = volume and lo = los[i] and from_position = since[i];
+    end loop;
+end $$;
+
+CREATE FUNCTION public.ledger_retire(volume integer, ids bigint[], positions bigint[]) RETURNS void
+    LANGUAGE plpgsql
+    SET enable_seqscan TO 'off'
+    AS $$
+begin
+    for i in 1 .. cardinality(ids) loop
+        update segment set retired = positions[i] where volume_id = volume and segment_id = ids[i];
+    end loop;
 end $$;
 
 CREATE FUNCTION public.line_join(volume integer, joining bigint[]) RETURNS void
@@ -547,6 +574,27 @@ CREATE TABLE public.base_synapse (
     transmitter text
 );
 
+CREATE TABLE public.checkpoint (
+    volume_id integer NOT NULL,
+    size bigint NOT NULL,
+    signed_note text NOT NULL,
+    made_at timestamp with time zone DEFAULT now() NOT NULL,
+    CONSTRAINT checkpoint_size CHECK ((size >= 0))
+);
+
+COMMENT ON COLUMN public.checkpoint.size IS 'entries it covers: the position of the last of them';
+
+COMMENT ON COLUMN public.checkpoint.signed_note IS 'C2SP tlog-checkpoint';
+
+CREATE TABLE public.checkpoint_key (
+    volume_id integer NOT NULL,
+    seed bytea NOT NULL,
+    made_at timestamp with time zone DEFAULT now() NOT NULL,
+    CONSTRAINT checkpoint_key_seed CHECK ((octet_length(seed) = 32))
+);
+
+COMMENT ON COLUMN public.checkpoint_key.seed IS 'private: the Ed25519 seed of RFC 8032';
+
 CREATE TABLE public.entry (
     volume_id integer NOT NULL,
     "position" bigint NOT NULL,
@@ -574,27 +622,6 @@ CREATE TABLE public.entry (
     CONSTRAINT entry_position CHECK (("position" > 0)),
     CONSTRAINT entry_reverses CHECK ((((kind = 'reversal'::text) = (reverses IS NOT NULL)) AND (reverses < "position")))
 );
-CREATE TABLE public.checkpoint (
-    volume_id integer NOT NULL,
-    size bigint NOT NULL,
-    signed_note text NOT NULL,
-    made_at timestamp with time zone DEFAULT now() NOT NULL,
-    CONSTRAINT checkpoint_size CHECK ((size >= 0))
-);
-
-COMMENT ON COLUMN public.checkpoint.size IS 'entries it covers: the position of the last of them';
-
-COMMENT ON COLUMN public.checkpoint.signed_note IS 'C2SP tlog-checkpoint';
-
-CREATE TABLE public.checkpoint_key (
-    volume_id integer NOT NULL,
-    seed bytea NOT NULL,
-    made_at timestamp with time zone DEFAULT now() NOT NULL,
-    CONSTRAINT checkpoint_key_seed CHECK ((octet_length(seed) = 32))
-);
-
-COMMENT ON COLUMN public.checkpoint_key.seed IS 'private: the Ed25519 seed of RFC 8032';
-
 
 COMMENT ON COLUMN public.entry.joined_links IS 'supervoxel ids, two a pair, that became accepted by this entry; likewise the three beside it';
 
@@ -873,6 +900,12 @@ ALTER TABLE ONLY public.base_block
 ALTER TABLE ONLY public.base_nucleus
     ADD CONSTRAINT base_nucleus_pkey PRIMARY KEY (volume_id, nucleus_id);
 
+ALTER TABLE ONLY public.checkpoint_key
+    ADD CONSTRAINT checkpoint_key_pkey PRIMARY KEY (volume_id);
+
+ALTER TABLE ONLY public.checkpoint
+    ADD CONSTRAINT checkpoint_pkey PRIMARY KEY (volume_id, size);
+
 ALTER TABLE ONLY public.claim
     ADD CONSTRAINT claim_once PRIMARY KEY (claim_id);
 
@@ -899,12 +932,6 @@ ALTER TABLE ONLY public.neuron
 
 ALTER TABLE ONLY public.neuron
     ADD CONSTRAINT neuron_pkey PRIMARY KEY (volume_id, name);
-
-ALTER TABLE ONLY public.checkpoint_key
-    ADD CONSTRAINT checkpoint_key_pkey PRIMARY KEY (volume_id);
-
-ALTER TABLE ONLY public.checkpoint
-    ADD CONSTRAINT checkpoint_pkey PRIMARY KEY (volume_id, size);
 
 ALTER TABLE ONLY public.person
     ADD CONSTRAINT person_pkey PRIMARY KEY (handle);
@@ -986,9 +1013,7 @@ CREATE INDEX piece_by_from ON public.piece USING brin (from_position);
 
 CREATE INDEX piece_by_to ON public.piece USING brin (to_position);
 
-CREATE INDEX segment_by_group ON public.segment USING btree (volume_id, grp, born);
-
-CREATE UNIQUE INDEX segment_current ON public.segment USING btree (volume_id, grp) WHERE (retired IS NULL);
+CREATE UNIQUE INDEX segment_of_group ON public.segment USING btree (volume_id, grp, born);
 
 CREATE INDEX task_assigned ON public.task USING btree (volume_id, assigned_to, priority DESC, number) WHERE (((state)::text = 'open'::text) AND (assigned_to IS NOT NULL));
 
@@ -1009,6 +1034,10 @@ CREATE TRIGGER base_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.base_
 CREATE TRIGGER base_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.base_synapse FOR EACH STATEMENT EXECUTE FUNCTION public.base_is_final();
 
 CREATE TRIGGER base_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.volume FOR EACH STATEMENT EXECUTE FUNCTION public.base_is_final();
+
+CREATE TRIGGER checkpoint_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.checkpoint FOR EACH STATEMENT EXECUTE FUNCTION public.checkpoint_is_final();
+
+CREATE TRIGGER checkpoint_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.checkpoint_key FOR EACH STATEMENT EXECUTE FUNCTION public.checkpoint_is_final();
 
 CREATE TRIGGER claim_is_live BEFORE UPDATE ON public.claim FOR EACH ROW WHEN ((old.ended IS NOT NULL)) EXECUTE FUNCTION public.claim_is_live();
 
@@ -1035,9 +1064,11 @@ CREATE TRIGGER task_step BEFORE UPDATE OF state ON public.task FOR EACH ROW WHEN
 ALTER TABLE ONLY public.base_block
     ADD CONSTRAINT base_block_volume FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id) DEFERRABLE INITIALLY DEFERRED;
 
-CREATE TRIGGER checkpoint_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.checkpoint FOR EACH STATEMENT EXECUTE FUNCTION public.checkpoint_is_final();
+ALTER TABLE ONLY public.checkpoint_key
+    ADD CONSTRAINT checkpoint_key_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
 
-CREATE TRIGGER checkpoint_is_final BEFORE DELETE OR UPDATE OR TRUNCATE ON public.checkpoint_key FOR EACH STATEMENT EXECUTE FUNCTION public.checkpoint_is_final();
+ALTER TABLE ONLY public.checkpoint
+    ADD CONSTRAINT checkpoint_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
 
 ALTER TABLE ONLY public.claim
     ADD CONSTRAINT claim_entry FOREIGN KEY (volume_id, "position") REFERENCES public.entry(volume_id, "position");
@@ -1047,9 +1078,6 @@ ALTER TABLE ONLY public.claim
 
 ALTER TABLE ONLY public.claim
     ADD CONSTRAINT claim_task FOREIGN KEY (volume_id, number) REFERENCES public.task(volume_id, number);
-
-ALTER TABLE ONLY public.entry
-    ADD CONSTRAINT entry_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
 
 ALTER TABLE ONLY public.finding
     ADD CONSTRAINT finding_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
@@ -1064,12 +1092,6 @@ ALTER TABLE ONLY public.neuron
     ADD CONSTRAINT neuron_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
 
 ALTER TABLE ONLY public.person
-ALTER TABLE ONLY public.checkpoint_key
-    ADD CONSTRAINT checkpoint_key_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
-
-ALTER TABLE ONLY public.checkpoint
-    ADD CONSTRAINT checkpoint_volume_id_fkey FOREIGN KEY (volume_id) REFERENCES public.volume(volume_id);
-
     ADD CONSTRAINT person_added_by_fkey FOREIGN KEY (added_by) REFERENCES public.person(handle);
 
 ALTER TABLE ONLY public.review

@@ -4,6 +4,7 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"strconv"
 	"strings"
 	"unicode/utf8"
 
@@ -30,26 +31,40 @@ func Canonical(v any) ([]byte, error) {
 	return out, nil
 }
 
-// exact refuses what would not survive.
+// exact refuses what would not survive. The bytes are the encoder's, so they are valid JSON.
 func exact(b []byte) error {
 	if !utf8.Valid(b) || replaced(b) {
 		return errors.New("text is not valid UTF-8")
 	}
-	d := json.NewDecoder(strings.NewReader(string(b)))
-	d.UseNumber()
-	for {
-		t, err := d.Token()
-		if err != nil {
-			return nil // the end: Marshal wrote valid JSON
-		}
-		n, ok := t.(json.Number)
-		if !ok {
-			continue
-		}
-		if i, err := n.Int64(); err == nil && (i > mostExact || i < -mostExact) || err != nil && !strings.ContainsAny(n.String(), ".eE") {
-			return fmt.Errorf("number %s is not exact as a double: send it as text", n)
+	for i := 0; i < len(b); i++ {
+		switch c := b[i]; {
+		case c == '"':
+			for i++; b[i] != '"'; i++ {
+				if b[i] == '\\' {
+					i++
+				}
+			}
+		case c == '-' || c >= '0' && c <= '9':
+			from := i
+			for i+1 < len(b) && strings.IndexByte("0123456789+-.eE", b[i+1]) >= 0 {
+				i++
+			}
+			if err := exactNumber(string(b[from : i+1])); err != nil {
+				return err
+			}
 		}
 	}
+	return nil
+}
+
+func exactNumber(text string) error {
+	if strings.ContainsAny(text, ".eE") {
+		return nil
+	}
+	if n, err := strconv.ParseInt(text, 10, 64); err != nil || n > mostExact || n < -mostExact {
+		return fmt.Errorf("number %s is not exact as a double: send it as text", text)
+	}
+	return nil
 }
 
 // replaced says whether the encoder met invalid UTF-8: it writes such a byte as an escaped U+FFFD, and a real U+FFFD as it is.
