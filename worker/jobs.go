@@ -22,6 +22,9 @@ var unfinished = []rivertype.JobState{rivertype.JobStateAvailable, rivertype.Job
 // expireEvery bounds how much longer than its lease a claim can live.
 const expireEvery = 15 * time.Second
 
+// checkpointEvery bounds how long an entry stands without a signature over it.
+const checkpointEvery = 10 * time.Minute
+
 // FollowArgs asks for one volume's findings and tasks to be brought up to its ledger, which has reached a position.
 type FollowArgs struct {
 	Volume   int32 `json:"volume" river:"unique"`
@@ -160,4 +163,36 @@ func (e *expire) Work(ctx context.Context, _ *river.Job[ExpireArgs]) error {
 		e.worker.cfg.Log.Info("claims ran out", "claims", n)
 	}
 	return err
+}
+
+// CheckpointArgs asks for every volume's ledger to be signed as it stands.
+type CheckpointArgs struct{}
+
+// Kind names the job.
+func (CheckpointArgs) Kind() string { return "checkpoint" }
+
+// InsertOpts lets none be made while another waits or runs.
+func (CheckpointArgs) InsertOpts() river.InsertOpts {
+	return river.InsertOpts{MaxAttempts: 1, UniqueOpts: river.UniqueOpts{ByState: unfinished}}
+}
+
+type checkpoint struct {
+	river.WorkerDefaults[CheckpointArgs]
+	worker *Worker
+}
+
+func (c *checkpoint) Work(ctx context.Context, _ *river.Job[CheckpointArgs]) error {
+	volumes, err := c.worker.cfg.Ledger.Volumes(ctx)
+	if err != nil {
+		return err
+	}
+	var failed error
+	for _, info := range volumes {
+		v, err := c.worker.cfg.Ledger.Volume(ctx, info.Name)
+		if err == nil {
+			_, err = v.Checkpoint(ctx)
+		}
+		failed = errors.Join(failed, err)
+	}
+	return failed
 }

@@ -57,6 +57,7 @@ func New(cfg Config) (*Worker, error) {
 	river.AddWorker(workers, &tick{worker: w})
 	river.AddWorker(workers, &full{worker: w})
 	river.AddWorker(workers, &expire{worker: w})
+	river.AddWorker(workers, &checkpoint{worker: w})
 	client, err := river.NewClient(riverpgxv5.New(cfg.Pool), &river.Config{
 		Schema:        migrations.JobSchema,
 		Queues:        map[string]river.QueueConfig{river.QueueDefault: {MaxWorkers: jobsAtOnce}},
@@ -68,6 +69,8 @@ func New(cfg Config) (*Worker, error) {
 			river.NewPeriodicJob(river.PeriodicInterval(cfg.Tick), func() (river.JobArgs, *river.InsertOpts) { return TickArgs{}, nil },
 				&river.PeriodicJobOpts{RunOnStart: true}),
 			river.NewPeriodicJob(river.PeriodicInterval(expireEvery), func() (river.JobArgs, *river.InsertOpts) { return ExpireArgs{}, nil },
+				&river.PeriodicJobOpts{RunOnStart: true}),
+			river.NewPeriodicJob(river.PeriodicInterval(checkpointEvery), func() (river.JobArgs, *river.InsertOpts) { return CheckpointArgs{}, nil },
 				&river.PeriodicJobOpts{RunOnStart: true}),
 		},
 	})

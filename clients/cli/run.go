@@ -97,7 +97,8 @@ where to look in your own viewer.
 	a.add(root, groupWork, a.claimCommand(), a.taskCommand(), a.tasksCommand(), a.releaseCommand(), a.extendCommand(),
 		a.resolveCommand(), a.reviewsCommand(), a.reviewCommand())
 	a.add(root, groupBooks, a.volumesCommand(), a.volumeCommand(), a.segmentCommand(), a.neuronCommand(),
-		a.mergeCommand(), a.splitCommand(), a.reverseCommand(), a.entriesCommand(), a.entryCommand())
+		a.mergeCommand(), a.splitCommand(), a.reverseCommand(), a.entriesCommand(), a.entryCommand(),
+		a.ledgerCommand())
 	a.add(root, groupLead, a.queueCommand(), a.assignCommand(), a.unassignCommand(), a.throughputCommand(),
 		a.detectorsCommand(), a.findingsCommand(), a.qualityCommand(),
 		a.peopleCommand(), a.personCommand(), a.tokenCommand())
