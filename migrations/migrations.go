@@ -192,8 +192,15 @@ func before(version int) int {
 
 // jobs brings River's tables up to date. River's migrator takes no lock of its own; Up holds ours.
 func jobs(ctx context.Context, pool *pgxpool.Pool) error {
-	if _, err := pool.Exec(ctx, `create schema if not exists `+JobSchema); err != nil {
+	// Asked first, because an application that may not create schemas need not.
+	var there bool
+	if err := pool.QueryRow(ctx, `select to_regnamespace($1) is not null`, JobSchema).Scan(&there); err != nil {
 		return err
+	}
+	if !there {
+		if _, err := pool.Exec(ctx, `create schema if not exists `+JobSchema); err != nil {
+			return err
+		}
 	}
 	m, err := rivermigrate.New(riverpgxv5.New(pool), &rivermigrate.Config{Schema: JobSchema})
 	if err != nil {

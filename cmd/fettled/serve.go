@@ -5,6 +5,8 @@ import (
 	"fmt"
 
 	"github.com/spf13/cobra"
+
+	"fettle.example/fettle/migrations"
 )
 
 func (o *operator) serveCommand() *cobra.Command {
@@ -51,17 +53,33 @@ func (o *operator) workCommand() *cobra.Command {
 }
 
 func (o *operator) migrateCommand() *cobra.Command {
+	var role string
 	cmd := &cobra.Command{
 		Use:   "migrate",
 		Short: "Bring the database up to date (every other command does so too)",
-		Args:  cobra.NoArgs,
+		Long: `Bring the database up to date (every other command does so too).
+
+With --app-role, also let a role of PostgreSQL do the application's work that owns no table. Serve with that role's address: it can
+append to the ledger, and PostgreSQL refuses it any change of what was said before. Migrate with the owner's address, and name the
+role again after each migration:
+
+  create role fettle_app login password '…';       -- in psql, once
+  fettled migrate --database postgres://owner@…/fettle --app-role fettle_app
+  fettled serve --database postgres://fettle_app:…@…/fettle`,
+		Args: cobra.NoArgs,
 		RunE: func(cmd *cobra.Command, _ []string) error {
-			return o.with(cmd.Context(), func(*Daemon) error {
+			return o.with(cmd.Context(), func(d *Daemon) error {
+				if role != "" {
+					if err := migrations.Grant(cmd.Context(), d.Pool, role); err != nil {
+						return err
+					}
+				}
 				_, err := fmt.Fprintln(o.out, "the database is up to date")
 				return err
 			})
 		},
 	}
+	cmd.Flags().StringVar(&role, "app-role", "", "grant the `ROLE` of PostgreSQL what the application needs")
 	o.use(cmd, "database", "fetch-postgres")
 	return cmd
 }
