@@ -359,7 +359,7 @@ func TestWhoMayDoWhat(t *testing.T) {
 // TestNothingLeaks breaks the database under the server: the answer says nothing of it.
 func TestNothingLeaks(t *testing.T) {
 	h := newHouse(t)
-	if _, err := h.pool.Exec(t.Context(), `alter table neuron rename to gone`); err != nil {
+	if _, err := h.owner.Exec(t.Context(), `alter table neuron rename to gone`); err != nil {
 		t.Fatal(err)
 	}
 	p := h.refused(500, "internal", "nobody", "GET", "/neurons", nil)

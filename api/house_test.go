@@ -34,7 +34,8 @@ type house struct {
 	router routers.Router
 	volume *ledger.Volume
 	queue  *tasks.Queue
-	pool   *pgxpool.Pool
+	pool   *pgxpool.Pool // as the application connects
+	owner  *pgxpool.Pool // as whoever migrates does
 	people *tasks.People
 
 	mu     sync.Mutex
@@ -56,9 +57,12 @@ func newHouse(t *testing.T) *house {
 	if _, err := synth.WriteTiny(dir, 5, supervoxels); err != nil {
 		t.Fatal(err)
 	}
-	led, pool := ledgertest.New(t)
-	h := &house{T: t, pool: pool, tokens: make(map[string]string), seen: make(map[string]bool)}
-	h.volume = ledgertest.Open(t, led, ledgertest.Import(t, pool, dir))
+	_, owner := ledgertest.New(t)
+	name := ledgertest.Import(t, owner, dir)
+	pool := ledgertest.AsApplication(t, owner) // so that it is known to be enough
+	led := ledger.New(pool)
+	h := &house{T: t, pool: pool, owner: owner, tokens: make(map[string]string), seen: make(map[string]bool)}
+	h.volume = ledgertest.Open(t, led, name)
 	h.people, h.queue = tasks.NewPeople(pool), tasks.NewQueue(led, pool)
 	for handle, roles := range team {
 		if _, err := h.people.Add(t.Context(), tasks.Operator, handle, roles); err != nil {

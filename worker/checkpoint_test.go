@@ -7,12 +7,14 @@ import (
 
 	"github.com/jackc/pgx/v5"
 
+	"fettle.example/fettle/ledger"
+	"fettle.example/fettle/ledger/ledgertest"
 	"fettle.example/fettle/triage"
 )
 
 // TestTheLedgerIsSignedOnASchedule begins with a ledger that nobody has signed: the first look, at the start, does.
 func TestTheLedgerIsSignedOnASchedule(t *testing.T) {
-	led, pool, v := volume(t)
+	_, pool, v := volume(t)
 	if err := triage.Full(t.Context(), v, nil); err != nil {
 		t.Fatal(err)
 	}
@@ -36,7 +38,8 @@ func TestTheLedgerIsSignedOnASchedule(t *testing.T) {
 	if _, err := conn.Exec(ctx, `listen checkpoint_made`); err != nil {
 		t.Fatal(err)
 	}
-	start(t, led, pool, time.Hour)
+	app := ledgertest.AsApplication(t, pool) // so that it is known to be enough
+	start(t, ledger.New(app), app, time.Hour)
 	if _, err := conn.WaitForNotification(ctx); err != nil {
 		t.Fatalf("waiting for a checkpoint: %v", err)
 	}
