@@ -38,6 +38,10 @@ func (h *house) proving() {
 	}
 	h.refused(404, "position-unknown", "nobody", "GET", "/proofs/inclusion?position=100000", nil)
 	h.refused(400, "size-outside", "nobody", "GET", "/proofs/consistency?older=100000", nil)
+	story := read[map[string]map[string]any](h, h.must(200, "nobody", "GET", "/provenance", nil))
+	if int64(len(story["activity"])) != made.Size {
+		h.Errorf("the provenance tells %d of %d entries", len(story["activity"]), made.Size)
+	}
 	export := h.must(200, "nobody", "GET", "/export", nil).body
 	if r, err := proof.VerifyLog(bytes.NewReader(export), proof.Expect{Key: key, Since: []byte(made.Note)}); err != nil || r.Head != head {
 		h.Errorf("%+v, %v", r, err)

@@ -1445,6 +1445,9 @@ type ServerInterface interface {
 	// ProveInclusion Proof that an entry is in the tree of a size; leaf number is position - 1
 	// (GET /v1/volumes/{volume}/proofs/inclusion)
 	ProveInclusion(ctx echo.Context, volume VolumeName, params ProveInclusionParams) error
+	// GetProvenance Who made which segments of which, as PROV-JSON (W3C PROV)
+	// (GET /v1/volumes/{volume}/provenance)
+	GetProvenance(ctx echo.Context, volume VolumeName) error
 	// GetQuality How well the segments meet the delivered truth
 	// (GET /v1/volumes/{volume}/quality)
 	GetQuality(ctx echo.Context, volume VolumeName, params GetQualityParams) error
@@ -2285,6 +2288,22 @@ func (w *ServerInterfaceWrapper) ProveInclusion(ctx echo.Context) error {
 	return err
 }
 
+// GetProvenance converts echo context to params.
+func (w *ServerInterfaceWrapper) GetProvenance(ctx echo.Context) error {
+	var err error
+	// ------------- Path parameter "volume" -------------
+	var volume VolumeName
+
+	err = runtime.BindStyledParameterWithOptions("simple", "volume", ctx.Param("volume"), &volume, runtime.BindStyledParameterOptions{ParamLocation: runtime.ParamLocationPath, Explode: false, Required: true, Type: "string", Format: "", ValueIsUnescaped: ctx.Request().URL.RawPath == ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter volume: %s", err))
+	}
+
+	// Invoke the callback with all the unmarshaled arguments
+	err = w.Handler.GetProvenance(ctx, volume)
+	return err
+}
+
 // GetQuality converts echo context to params.
 func (w *ServerInterfaceWrapper) GetQuality(ctx echo.Context) error {
 	var err error
@@ -2808,6 +2827,7 @@ func RegisterHandlersWithOptions(router EchoRouter, si ServerInterface, options 
 	router.GET(options.BaseURL+"/v1/volumes/:volume/proofs/inclusion", wrapper.ProveInclusion, options.OperationMiddlewares["proveInclusion"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/proofs/consistency", wrapper.ProveConsistency, options.OperationMiddlewares["proveConsistency"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/export", wrapper.ExportLedger, options.OperationMiddlewares["exportLedger"]...)
+	router.GET(options.BaseURL+"/v1/volumes/:volume/provenance", wrapper.GetProvenance, options.OperationMiddlewares["getProvenance"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/neurons", wrapper.ListNeurons, options.OperationMiddlewares["listNeurons"]...)
 	router.POST(options.BaseURL+"/v1/volumes/:volume/neurons", wrapper.AddNeuron, options.OperationMiddlewares["addNeuron"]...)
 	router.GET(options.BaseURL+"/v1/volumes/:volume/neurons/:name", wrapper.GetNeuron, options.OperationMiddlewares["getNeuron"]...)
@@ -4210,6 +4230,45 @@ func (response ProveInclusiondefaultApplicationProblemPlusJSONResponse) VisitPro
 	return err
 }
 
+type GetProvenanceRequestObject struct {
+	Volume VolumeName `json:"volume"`
+}
+
+type GetProvenanceResponseObject interface {
+	VisitGetProvenanceResponse(w http.ResponseWriter) error
+}
+
+type GetProvenance200JSONResponse map[string]interface{}
+
+func (response GetProvenance200JSONResponse) VisitGetProvenanceResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/json")
+	w.WriteHeader(200)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
+type GetProvenancedefaultApplicationProblemPlusJSONResponse struct {
+	Body       Problem
+	StatusCode int
+}
+
+func (response GetProvenancedefaultApplicationProblemPlusJSONResponse) VisitGetProvenanceResponse(w http.ResponseWriter) error {
+
+	var buf bytes.Buffer
+	if err := json.NewEncoder(&buf).Encode(response.Body); err != nil {
+		return err
+	}
+	w.Header().Set("Content-Type", "application/problem+json")
+	w.WriteHeader(response.StatusCode)
+	_, err := buf.WriteTo(w)
+	return err
+}
+
 type GetQualityRequestObject struct {
 	Volume VolumeName `json:"volume"`
 	Params GetQualityParams
@@ -4878,6 +4937,9 @@ type StrictServerInterface interface {
 	// ProveInclusion Proof that an entry is in the tree of a size; leaf number is position - 1
 	// (GET /v1/volumes/{volume}/proofs/inclusion)
 	ProveInclusion(ctx context.Context, request ProveInclusionRequestObject) (ProveInclusionResponseObject, error)
+	// GetProvenance Who made which segments of which, as PROV-JSON (W3C PROV)
+	// (GET /v1/volumes/{volume}/provenance)
+	GetProvenance(ctx context.Context, request GetProvenanceRequestObject) (GetProvenanceResponseObject, error)
 	// GetQuality How well the segments meet the delivered truth
 	// (GET /v1/volumes/{volume}/quality)
 	GetQuality(ctx context.Context, request GetQualityRequestObject) (GetQualityResponseObject, error)
@@ -6066,6 +6128,31 @@ func (sh *strictHandler) ProveInclusion(ctx echo.Context, volume VolumeName, par
 	return nil
 }
 
+// GetProvenance operation middleware
+func (sh *strictHandler) GetProvenance(ctx echo.Context, volume VolumeName) error {
+	var request GetProvenanceRequestObject
+
+	request.Volume = volume
+
+	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
+		return sh.ssi.GetProvenance(ctx.Request().Context(), request.(GetProvenanceRequestObject))
+	}
+	for _, middleware := range sh.middlewares {
+		handler = middleware(handler, "GetProvenance")
+	}
+
+	response, err := handler(ctx, request)
+
+	if err != nil {
+		return err
+	} else if validResponse, ok := response.(GetProvenanceResponseObject); ok {
+		return validResponse.VisitGetProvenanceResponse(ctx.Response())
+	} else if response != nil {
+		return fmt.Errorf("unexpected response type: %T", response)
+	}
+	return nil
+}
+
 // GetQuality operation middleware
 func (sh *strictHandler) GetQuality(ctx echo.Context, volume VolumeName, params GetQualityParams) error {
 	var request GetQualityRequestObject
@@ -6527,133 +6614,135 @@ func (sh *strictHandler) GetThroughput(ctx echo.Context, volume VolumeName, para
 // const string: with thousands of chunks the chained `+` fold is several
 // times slower for the Go compiler than parsing a slice literal.
 var swaggerSpec = []string{
-	"3H1rd9s20vBfwdG770l7lomdS9PG/pQm7TbbpM2TuO2HNutA5EhCTQIMAFpR/fi/PwcYgBcRkCiLcrL9",
-	"lFgkcZkZDOY+V5NUFKXgwLWanFxNSippARqk/Yuqn2fm3wxUKlmpmeCTkwklpVDM/JEQIQnl5M33z8jD",
-	"hw+fEM0KmCQTZl77UIFcTZIJpwWYr/Qkmah0AQU1Q+pVaX5VWjI+n1xfJ5M0p6x48dw8tN+XVC+az+3T",
-	"STKR8KFiErLJiZYVtEecCVlQPTmZVBXLJklgBpZBUQoNPF39CKv+xp6SX3558TwhBc2ACJ4CmQlJlguq",
-	"CVNECzIFkgkOhPKMXECpiV5IUc0XBC5BroiEEqg+JUyTKaSiAEX0AgjLiJjZ/wHXcmVgZv6wO0qIEkSb",
-	"GegfHL83c1GuliAhszNxod20c8r4PfKKrojS5gnj5EMlNKiEUJzrxXdn35NM0pkmC6oI0/f+4B4hC6AZ",
-	"yAakLxpw3DXw2ATcgn58CXyuF5OTh98kk4Lx+s/HIVBzqKTgP9mJgvi0/2ycsZnifmiGks7hWSWVkPUM",
-	"axSX4tPNVGeGeckKpmOj5PZhe5AMZrTK9eTk/vFxYiDDiqqwfx1byLg/60UzrmEOEqcDqQT/gfIsj0Fm",
-	"gQ/3gY2CeQFcRw+Te75xjn9ImE1OJv/vqGEQR/hUHb14bqfRVF38VBVTkDEk48NBp5Zx/fjRZCsAtQR4",
-	"y/6C/uk1h4uBMofCnATz4imheZ6Q5QI4oVOFWw4hWZkR91nWpcirAjbQO76wB1avzaeqFFyB5c2vpZjm",
-	"UJj/poJrszfDscsyZyk1IDkq8Y1//qkMfK4G4taPa2fsQthywiVwTZZS8HliuZP9UQuSCcLho0b6w7HM",
-	"VE+VYnP+Bj5UoOwKSylKkJrhLqbu100r+ta848jNfsQ0FCqIpXXM2OP5Al/H8+neoFLSlR1UhPlCg6bf",
-	"zTvv6i/F9E9I7Xpwa+aV9V2lokJ09NdTb2IdtCxdEMENK7fkakjYAIeYe4BQdQGZuY0M/e6w++5u17aF",
-	"qwzt7Nsgrupd7cDyksmMFixfBYCcTC4Yz7Yh/4yqix/Ne8NX/2wB6UUpGA/swVzt51R3wJdRDXed5NJb",
-	"Ixc6wGsMdhD5JK1nI188e/D2NdG5mN9tfv3yBI8I5YRWGdNCkguAUoUmE5LNGQ/CSgqh++swgtfjJ48f",
-	"WG5HzAWfkAV8DI2tNjNNTVJxacS+ZDtdrWHCrTrxXNQu1UEuqSG+GVNOHusi6yIkpFkYX4JkMwYGlKsT",
-	"YljsPxdULf45pQraS44caDNwcD1WyOytYxd6AZ4hRwBujsTvhmmL/BIyy/pzoMr+Fz6WdjHJxEBd0wvg",
-	"rRWtDbcTwbJsgDDsBZEgqRkWNZC/VFyzfOja1pCA6zJz1atJUEvAUaMIil4mltW4/9dcsr+9tRvAcKHu",
-	"J8P4UeAuiQFum0yzvs3noCHVKNkGtjgGN/WCSWAgRVdq+6XoBHi3IDe9+/jdhj2p/qZqwA/CQA2cbfcb",
-	"jhZay3fZHFToguOapnr4Ul5TJkOEkDN+se8ovevOrc2PHtwXcvN9IWyGWYX2ZQW8rZSxAe524D5/nWlU",
-	"IWie/zybnPy+TftQk+t368Kp02kUatNMWy3eTErnTjbuX+GlFHNJC/ykFEpDRgTKXsiR7igyhQXNZyEW",
-	"ugtXnsJMSBh9jxK0hfp10lYC+hs1csI3X3/zFdHwUePXS6qIuTMhOyVLpheEEsX4PK+tFNwe695OUqEC",
-	"k4iZ+b7MmU6IkX9ElnVEiUxU07wFGacZmvGqrQoAHtfhd9ufgjmxfNCoQxinpVzPOXOgs3MDuw0CmXnH",
-	"wpeIGXG4icpmGy5jb2obeCFLoLGRJBj5DoaqDgpgh2vR0uuAGzGGMqceb+UttRpdwyVBQcJdP11BwkGj",
-	"Pn6JYzU1iSD5tTEaZVs/Oirxcl0Bcm5tBoboJx68NA+Kcd9dsgx4Cn3eF72FK8508MElzSvocp7I4Qrf",
-	"2Ph9aJ/fM56ZSXqLzFrySF9Ebe1t2PXiPwgQzAb5Zk5RNVpTYD6WkBq+rVaclgoUKStNJJsv9DD+gzyl",
-	"L02FdA8DQbSzljlNgSwXLAfiuDJhmSKpKNA8PBchMt9VRrO60TkvtooQVts1H0gxpVOWM70aRCL2i1IY",
-	"ut1uF8L3rIQYgZq/oAaxizXyrImsL1ReWOt0PXgLLi3yc8vqwsCRzQZq31ta8qfmAPLSDyLPQO6nkO5M",
-	"cp9cMax5uFMOHRFsUQ3R2L3uqVouRA4EqZ3MpCjIMdGCPPjP40d371s9nBZlbka6/82jR4+/fvTo+OuH",
-	"Xx8/+eqr+4/vf2WIiWoN0gz2ny+O//f3+3efvPv9+O6Td1fHyf0n11/+IwRyQ93DL84Q4bxQqoLsTFwA",
-	"72NfQSohfDdo/8VGbNuX+kZO82viRw+B2JDIGSsCt1gKXAmJMlcXBdbL5QRWa8ywwqaorEFMVNowzCAF",
-	"7Uq3BWSM8vOC8UpDwML6Iy1zyu++Agby1HkDHAM3Aj5Z0EuwrrZmld0lDuClta0nYPpdN0EhUbesQzUM",
-	"Q6B/KcRFVe7LqnCUFxqKPZTn1iAB0kTH0iCiV1UJ8lJ8hHygv6m9vtbH9c2wYblRmxENH6Rm+F2Pctfh",
-	"0Hc5RPcRhvYrMMS16ZIaIJbvew+9MrLuawmXDJYBEA4DDJ3NGHdySV9DLUQGuVW3cwazhDD0mOulIFpU",
-	"6WLYAZwOW0rGlKY8BSdZDRi4LdgMgvxbR5IhpUhomm83NOJbPXpphCA3Tnc7yYQafSeOxvhJ2L4ltDRM",
-	"h77oZfN9zR7W2+JNHytREUWXJ4TmOV4resEUSReUO32+0YFbUQsP2kcxcgAQcq11h4D4E1AZhN+NiepT",
-	"ccsu4YT3WkkRkEBotqtXAr+YhjU7ytMFKpfbwRC3Wg8HZlgvdqtorTVpNrr5jkE47a1JOHDf/Gr+CZZR",
-	"lA2CsT+5HsqtA3TfuXo3Bp7EwRpZ7uta2+gud1FHyAQ8ofkON+AbkcNWiDYhN3bsyFoj4rj3EHeZTQg6",
-	"vUF/LoF7u9IaulqxBTv51L2VZAD72VnCbkTrQbIwzQJ3veXX6KomYuYC53LGw0pAHS0xTJqu7Qb4nV9E",
-	"0oCz2cUGy8DPTuZvWftSISXeCclEicrOVvE0ByqDBj/r07mp4PjArrL5Y12AeA2izGFfbuOO3s25Tezs",
-	"jnw7bGAFOczacu1UiBwovx0mEbsn7Jri4Hpm5ZQ+0PxWHMFpWUEzyPgbi6zuOQ2559IUSh3jRf7puVpQ",
-	"9HBtvGDsS/YzzS7hfCEqOZSjNGcwuJCMrnoUF4zQcKEXwUF2CwaoDSIBKX+DHa2OAwkuYZMRwTzVleTx",
-	"p0ZFiz1FxhUPSzsvQZ63EDMQL54PbmfTtWXP4Kpr/NjAXyOBMx0K8phrgaAhzUkLbMGT6WPFulfVx4Ss",
-	"EvIXYZxYxaofeBeHScPMH7aZ+cMAM2/iOGmWWZ8WzV+3DiCGia5HKmSBYC6l6TSHxEatO9d2MMwsA03R",
-	"Ott7NGOQZxFnOZXaB7JLVCKdH1phPGgwGomjhhGcjMNHfa40lKF4yCaqVCyD8Wya6kpFqJnpyI2BP7Qd",
-	"kpJtNUjbp37UeuYEsRAkKCnErM9IbURwb6vWCa/QOG1gmwO9BEWqckllHc43PJwpHCi4JShw15C/bqSf",
-	"3VcEDrVv6UY2o4H2nLkUVbm3s/pio4f33dagQvN5CAr/U1HvjwsE1EJ2bphbAGct06BLEeFEXILMaUmK",
-	"Smk0WWNaihtqEo7AzRWc292omD5h3rD7jLxhvz6fuufddV5SyWzEueEOjCMtmT+nKzIFxudEC0HmeWXX",
-	"N4B5cqHPVSokZOeNCXaA02nXWAnKs3OQEtXiNTUlo+bmIG8oz4h9JyElZVKhY0CCdQA7M8oQbcjMVUpI",
-	"mVpf4JaPJKQ0z4dalG4ANYv2vVCbVppU5RBArMsDTRBHaxUdauuBrguWDhbXSH2NrpO187YOrRDdhY8z",
-	"VAEBfmF9tcOZkPPthqIH6TweqI0WTyOtNR6rmchzsYSMrEAPid/uqPKRcAojQ9A8J6IETrw6Pezsssh1",
-	"b4YaDJ7aNBIAkLmAa1UzIDFdxTMhPBrX7zMc0a2xbSTwaEW01PsLEcYblFKjBvYNduld7GpumPAKlMgr",
-	"zwJvHjPgTVp9FDaWkY3Ic68ND23rRRM26ZKW4mv9gDB9kxSF2ovbDRCzG41C8jKOS5QNtoCh429pgXWb",
-	"W+ImcEYhZZv2bV6qFxSBURgcGNwWhUfb1TNA9Np4U2/OJ7qxd6d12Wx08LyJuTnHOEAbrQIugLB3HPzK",
-	"Sf9cVDxjGaYT4wnBDQ64Ai5BZizdSjK/utd6gZju9x1OlAFrlICGn42RFh5co8g7Vt/S6HHSp007y4LE",
-	"eFFrYJh3PULNIq0jJRCP1Mj0iZGhmFY2PVz6/G2O3kUiuJXsKcE8tnX9f+e4wJ29hz3YvG38a+spnKnz",
-	"Fu3j4zWQSCspgWtingDPKNfq1IAI8pmL1GHW2uDeswqikHzDgbFnxKbzM52QYyvVGDBnkLNLzAAecFT8",
-	"fEFLM8uG6ag+VH/LYtGPndmdci2I0IuBWXl7BhYwjIbGnTrAtmIMHJZDp+atN/yuCcRsHrB2PPmK/H/y",
-	"G8uV4GaDIC9pPkyyzMVyoBZ04whp/BCnSnADwQ2zLBQDR6f5Ds7/GZPIB4eemsihUQXNc8MymiNOWFZb",
-	"RfoYuG/YzYMTslwIBcSG+RtqM4KuOiXHJ+aPGc1zRcRsRipu3ohYFvYiOFxei8RqAHrgBGFvRJh4KFIx",
-	"ZfNKVGqANSUVVZ6RuSDAzBkjS7oKn/5gwotPcjkl8KGiOXJvlxhNZkhAI2e/NFauUHiMQSNVpB1Pluxl",
-	"DhsYUNEKdFIs28E3ZU9RYN4lldzHZQ81e4aDpCZ+ST7Nw6IyaVFJa7YavlGqG0v4DVgrB4aUQTjtdN0C",
-	"fFMJ2S1si3x85qLAwwEL58GCCq66z7YdYv61zSnxwXZrboFOopqm6sLnqQ1O3v3uMhKWtyGoYtZKFdg3",
-	"J2CHAI2B6W4uVWXvyP+dayNstyJZn7k1E7KhMdS8LigT8AiVNvKBOIfMIJPwzgk0TMhglKpBHClBEtz2",
-	"sN3cTj6O7Nh9NgYENG/W7uLt39i3Rsv7cQa8IaT51r64KT/QcPCg6boOGEU5J2e2bpcVp5FxGB3OCDwk",
-	"pdy6UAzzCQo6IUm5Lm1UZyRiklIvH15jGEI4ecllLNX8JZi81DZH1uTZHFcPgRivfi54QFoFn4o9LBHc",
-	"8fxt+Oq7Ts2PsZUhK751Q4vhJNuj4RGyi0jlkppvtqwF1ttw13sN8a+Y7xBHeOvPgR/CmZ8bUmyFSISi",
-	"GbaVDznz8XP7BIohYsfPbjvD4nllpccJZXseFoeiHongQjda+CMRoBsi1AZe4czme+1W5wU/iQTN5VTp",
-	"88rFGO15lCRciovhI4W4ZR0754oCNYtv7z0K8v1JGFPebhzqeFYruuvlpD7uIlwUjO/yOq/SHNhQN243",
-	"Y2nIFy5j+pzxXb8QlR74yQ4r2pAZVY/TXfXaimqI1ZBOPIZCSP21MSR7/os8tuawQZ76ay2K9DSgqoDs",
-	"vC7+MgA6U6rgvC08DbFGtqrUDHg9Y3MIGTDe/vD07oOvHnufgrOIQra1WMWCqnMtKwxl6ttDD3wkYukf",
-	"O52VrZ5Hwz7RzTJMzZDwp1V4zndEzs0P7dACgBjXGd1vVRItCFYfbEUV+IiCU3L3PsHiGRYuaJcbZoyW",
-	"jM5h4NReAB4wO8GBBzq5DGiH01c4g6XlOFzfVA/AyRrb6h7wpF3GqU8zyRoPaWG7xdqa89faX5/j1Sc/",
-	"yPosD/tWMpjtUJJkp/iqLbCMr2rvy769uZtf+b8xvcgkjXssD1CONKA8hRZnFe60MnrgW7Nntx4vnFo4",
-	"WK4MVFod1X2/0LrEuq6Mz0T/RJ7Z6NNsDjJxp8yWMrHa8ocKKiC2zFPtFbWGHaDFvT/4H/xFpgiV5iJJ",
-	"WUFzW2nqxBzbFakU2Fiix4/IlGmFdWMp+ffbn3/ypRkyAYpwoe8RexRxqE4A9j3ynur3xPIoOhUV5hGV",
-	"VOkT0lQk/4N/0S368GWwRnni+E4BlKuG49euOFcLjGrzseNATN8jL5nSrsgL46Skc1Cn5L1RhN7bEuEL",
-	"+INj2Wl/ryIvM5DyhcNd6QGXCAU8u0e+pyyvJOCuXdleglHainxhVv7k0Vdff1nX6bJx3uR9KjJ4j9B8",
-	"X8dSvyeKrtQfvImgvke+Z3Mc3sLNGdHsXFZxojnJqKYnJBcpzYmsclAWjxkYWJKCrogCX/YcSrPwAguL",
-	"u0jryQw0BkdfglTOz+RjvmjJJieTh/eO7z10wcKWXo8u7x9l7aKAcyxqYc6YDTJ8kU1OJgbiTenAtRrI",
-	"D46PN9Q/3q3ucTNJoPJxs077yNX/Dg9Yr7BVStlcC0VB5cqdMgSxdUPlQlxYv7SNYbTx+nSu7PHHi+6d",
-	"+dwAC7lyEEr/Av0KDgkdnyzWB01TLG8E2Py2EJj2b3gZmUIujFCgRQsqSL0NVMo6GS5KPy5f7qDgsTME",
-	"wOOWtz9ovrsEuZqKbGUDR2qFugcWe8cGAPE0y177SB2XvvGtwAzNUUDQJPNed+8xLSu47sH+/i2Qps3K",
-	"GwH0TzNzXSGR29uEFDRdWINyimWot5Hn0RUi7Hq9x0bE69+8ctTpGHD9zjLQdNHHLyYWHhTFnQzGQVi+",
-	"DQaEkVMre59xsRwB37jDGuV3FLFZl1aS4EKDLzsBK9RXbO7mYBI40rVJK8qxnNXrgPB0M4QYunuy/7Fp",
-	"4IdjJnXtJ70AJgmWmlIRLrbnKQkyQVtX68xVujoQF/TltW6VCbYLhgVwijbWEXBq5yEUEWqD8xwWjfir",
-	"FmLJsRyLwIp8ux2Joyv77zVqJjmgPbqLwTfWGN2g8JDHIwRJbwzfH5S4Ew/L8Q9BEuxDolvEf7M+Su8c",
-	"Di8bbT3Kx7xGf0BM+SkCuPIrHEdmd6O56slgNMKiFNJl3Tnc+SlrSnc/HF3hf643ifC/Nj1iDgqsmBjv",
-	"XNljiPGuwHRtVfa9YsCZ8tDMYH80PMRZ/KTCxlZBgO56GlotedZptsbGEYYtFaH2ZzvOEJW77QxndUGS",
-	"8e+cboudW5bL6iY4AZpaiCUpKF+NQFH/YpfgDNQYFm9ZnVWFnAXJRXbbnjnWTOUCMGptGo1p1wMo4Wjp",
-	"bH8HIglvWjwkUaybL/+eZPESNKHcqsUuGxpJpGbRc3YJvE0yO1BE2ukjFGParW5DB4Rna5YI826tdpz7",
-	"jsPShpX32hx5H5ll4W25xVY92JNRx87MK3oBf0tQv2Vzbq3j3Qxfe1N6lbYP4+00e+TCQrfTre/9eHB4",
-	"mokiIDWLHYdsy2qas9QM6BNq/PRoXrd/uwK/YxNvFCu2CPJGSfkZvnJIlcayuxD88cE4Ut9KVDaVJMBn",
-	"D8IXLNzOXBepnYZf6wZrpjjERdxpWXXLVgEXktnD+EpUUhFbS92K3zZvnciKKyKqUe4PegGNOGYIIPEC",
-	"muBgG7btIpvh+Tm6sv9eH8FHDa5o4o0JKtn6tu9HHKe97+w6ntWdiQ/FQDErInIX+ZSJPTH2Lcxd41Qk",
-	"BupCj2+IIlex69PjyBVleNZqHz32CV+r+3DLknbsjFs3movcHUP5ohgHMKXpBdpxXSEwuqNQvU4nNr75",
-	"c6ATu5DD0kmnpsQnoBObChA0aroo8xHclDa0w5LKWguFU0JbRQoIUz7Kwr7HtPOuEKoJVvYZSlLQdL2L",
-	"ile+M94BAeynCLmobKjIKNBFHSGmgrkf9pO1knAj9Fp/3tBOPfylT4UZDMaV7/h7FWFqdxSxtunQbK5r",
-	"zHCDdhLLyLcBM5fgPRoQmdD3FBvSPfw4FCgXn38KuVhum79ubnbj9uVhtAmZre2rpt6JyDOwkaB15or/",
-	"Ac0GwXJ52x0YTU//gW9j6/645uV4w9GVh+lGA/x3LuL3oDwiqgODz7bak0n8zN1YrXt6utId1wV2fjwU",
-	"5+i6nFrBsQO8ToMoNo7vj6WQbXvdOiNe2GoupwRoukAo3VEkpVxwltLcwcmDjcmmj2NCGCf2SJySrhFI",
-	"JU0EoZi5yELspu3qm2PBHuvsUFiOxBcicetNepqF+fmlZ+870mPeJcj1cxgkPof/cWwwGIDpfTwKIz1f",
-	"Mtfd3oIHcy5dH++sFRjAFFEgL8e3LMZIpp3cHZUfvm8yNA/GHOo5DilB/OZjDhVRlSpZykSlCBfLhBRC",
-	"aWKznH2Yfy8S8QBiRavt386CRZ1se1iRpEmSjw3XKjgxLFzj+Se6D3PbDetQvs6XQlz8Uh5Ifeo28rpl",
-	"7cn1XwuF1qDVxN4MhKpxYkPO2h2PxMy6y9qlXRJzYm0oom4Fv1sTm8vJdCe3Tj2Jq09NYeADUMRrofQr",
-	"lxH9WZpnuzUab9c8G5UGUTEegY7+LQx5LkVDTNMVoSRn/CIk+20mkaOyVXbpAKSCo3tq+TyQfTzu3L5w",
-	"VQDnRodTAHysO54SizWytGWuCnoBp4QLvWB83thediEC3jQ+i+lPvjfaAcHop4iIsX6RI7HgpqSaL8zY",
-	"KcoY4LIHkJA+DlOc4jXuwsOuDjPsX/sPu15pTVwQxr1qgL22aR63h9xIGHsXJ/u6t1tUO/D933ZFPlU/",
-	"z9zNdrDjgisLHBe/sXGOSgp53aZANim8NkCLFoDxfz7su2lh6Q6QX8uBnMRPs8z1xTtY1Lfv3Xe7EkR7",
-	"1sPkvnxvEUmoRXCDzZJxDhlyw05zyT5Gtxysoysz4vXma6XG3UGPSfxS8X0Z986IwKHquFd3FAaL8+Oc",
-	"k+2qJM4z9G3HxoYh+mjBlBZytR3hP7gXP43PxnuVxmGPneAuX+O31dcWQ1YRUncUwaaZCUGres8e8ynI",
-	"IIpea5xTR6ngiimrr0VR+1qKS3jWevGQCWPWZhhLWMWHe6PWTlJH7BEtweXIK/YXkLkARQTH1k6UW2xK",
-	"58gZ07TZE5ns7M5HiJOalUXEJexDcjPbfMSdtWXtZjFv2V8DiIrxNK98x5w4Sb2oX/sbERTlzm/AFHFG",
-	"pi59naJzwsW/o06HF8ddcn98Egv6hMd37YxCPh+alluxO8Z35TogxfgpAjRj2wyNcbn8IJZkCbYVestk",
-	"WADotbJOvmTMuIk1ewsHH3w3pTieoILDYslMEDnXuLwxTDI+82kp5AVmOSmfFCWw+Dqx1SZHjpuNwd13",
-	"Gzmk4dd3jflcbb/rXW3+dubfX3gmbMCtL2U22NiHdsrNVo837p3/5pj1ph6yj46gTGPzM4IwMDrvSlQj",
-	"n8txvHme3x9duf9tVKPf1naxg+GrbgYQ5qaq6RUwjonba0/IP4UkC8jrXFOqCXYtsc0LD2Ov3fK2m8hG",
-	"ng5H4hAV2UH6b6sj17i9o3xFSmJxqbFqcFQ3/txxW4AR1zdz1lfunYO6o3CKQ8aadF0oCjUX3+SpsdJ/",
-	"Ssx9ihiMps/ugeQu263kcxW61noQ/s0krtdUautwx14qhuTXToARx/y1NV1h2yDUh20f3SnoJYBV94td",
-	"BDYkqttx0Xv6+jzI43jcuW/VRW+xNp6LvkVqR1fNH5ulwrb35sDxUy80BBPZWq6QcYOnnLGs1XRx97ip",
-	"8QOiVRfkMbvZCAGEW4wvdQnbeCGyukTFbWt440khZgYX3boUUi9IJswJ6wW5jqPWBSMSfBOYwSBxjW9u",
-	"KXz15nG07bZfWz5fb+ckfMcdc/x8BhrqaeOmH/3XBOdaCjy6QoP+RqbtEt7/m5NKn7aSBG0JKF8C3vvG",
-	"F7Vqe7uGFzPLTy4aaSCqjsaQunZcWTyR1SylJpCDWE1bjZw/oyxWqlx/4HGqgD61vUCIEgXY+kKQK7ij",
-	"SNNrLUHGpSvJCdOn1mKIfZnW8lwrnnWdvtsyWnWnM1KUCTRvHRLizSzB8satAuJjJLjSdNGUDbW+kumK",
-	"ZHR16suWKwAXRyaWPMEubphmZbB0R93OjT7sNuozT2xhkdlWs8GbWIoinMmZoQgxaBabihafZO2u3nkK",
-	"7KhXsIyz+UIrUlqldwFmSkW+ePH0p6c2TOzLyPx/4WkI5ZX+cvYsWHKy1fLAYtA1O/j9nWGEmC+GqK1k",
-	"PjmZHFkG6ejgqkGaq8Vd/9JUiLxakxY6v9XJcc1Qzt9f/9BEU161E5G7P2Aa1fW76/8LAAD//w==",
+	"3H3tdxO30vi/ouPf/R3acxeSAKUl+UShveUWCg+k7YfCDfLu2FazlhZJa+Pmyf/+HI2kffFK9jpeB24/",
+	"JbZ39TIzGs37XI1SMS8EB67V6PRqVFBJ56BB4ieqXk3M3wxUKlmhmeCj0xElhVDMfEiIkIRy8ubHp+TB",
+	"gwePiWZzGCUjZh77WIJcjZIRp3Mwb+lRMlLpDObUDKlXhflWacn4dHR9nYzSnLL582fmR3y/oHpWv46/",
+	"jpKRhI8lk5CNTrUsoTniRMg51aPTUVmybJQEZmAZzAuhgaern2HV3dgT8uuvz58lZE4zIIKnQCZCkuWM",
+	"asIU0YKMgWSCA6E8I5dQaKJnUpTTGYEFyBWRUADVZ4RpMoZUzEERPQPCMiIm+B9wLVcGZuYD7ighShBt",
+	"ZqDvuH3fzEW5WoKEDGfiQrtpp5Txe+QlXRGlzS+Mk4+l0KASQu1cz384/5Fkkk40mVFFmL73jnuEzIBm",
+	"IGuQPq/BcdfAYxNw5/TTC+BTPRudPvguGc0Zrz4+CoGaQykF/wUnCuIT/2ycsZ7iJDRDQafwtJRKyGqG",
+	"NYpL7a+bqc4M84LNmY6NkuOPzUEymNAy16PTk+PjxECGzcs5fjpGyLiP1aIZ1zAFaacDqQT/ifIsj0Fm",
+	"Zn/cBzYKpnPgOnqY3O8b5/iHhMnodPT/jmoGcWR/VUfPn+E0mqrLX8r5GGQMyfbHXqeWcf3o4WgrALUE",
+	"eMv+gu7pNYeLgTKHwpwE8+AZoXmekOUMOKFjZbccQrIyI+6zrIXIyzlsoHf7wB5YvTavqkJwBcibX0sx",
+	"zmFu/k0F12ZvhmMXRc5SakByVNgn/vmnMvC56olbPy7O2IYwcsIlcE2WUvBpgtwJv9SCZIJw+KQt/dmx",
+	"zFRPlGJT/gY+lqBwhYUUBUjN7C7G7ttNK/rePOPIDV9iGuYqiKV1zODxfG4ft+fTPUGlpCscVIT5Qo2m",
+	"P8wz76s3xfhPSHE9dmvmkfVdpaK06Oiup9rEOmhZOiOCG1aO5GpI2ACHmHuAUHUJmbmNDP3usPv2bte2",
+	"ZVcZ2tn3QVxVu9qB5SWjCZ2zfBUAcjK6ZDzbhvxzqi5/Ns/1X/3TGaSXhWA8sAdztV9Q3QJfRjXcdZJL",
+	"Z41c6ACvMdixyCdpNRv56un9t6+JzsX0bv3t16f2iFBOaJkxLSS5BChUaDIh2ZTxIKykELq7DiN4PXr8",
+	"6D5yO2Iu+ITM4FNobLWZaWqSioUR+5LtdLWGCbfqxHNRXKqDXFJBfDOmnDzWRtZlSEhDGC9AsgkDA8rV",
+	"KTEs9p8zqmb/HFMFzSVHDrQZOLgeFDI769iFXoBnliMAN0fiD8O0Rb6ADFl/DlThv/CpwMUkIwN1TS+B",
+	"N1a0NtxOBMuyHsKwF0SCpGZYVE/+UnLN8r5rW0OCXZeZq1pNYrUEO2oUQdHLBFmN+7/ikt3trd0Ahgu1",
+	"X+nHjwJ3SQxw22Sa9W0+Aw2ptpJtYItDcFMvmAQGUnSltl+KToB3C3LTu5ffb9iT6m6qAnwvDFTA2Xa/",
+	"2dFCa/khm4IKXXBc01T3X8prymSIEHLGL/cdpXPdubX50YP7stx8XwibYVahfaGAt5UyNsAdB+7y14m2",
+	"KgTN81eT0ekf27QPNbp+vy6cOp1GWW2aadTizaR06mTj7hVeSDGVdG5fKYTSkBFhZS/Lke4oMoYZzSch",
+	"FroLVx7DREgYfI8SNEL9OmkqAd2NGjnhu2+/+4Zo+KTt20uqiLkzITsjS6ZnhBLF+DSvrBQcj3VnJ6lQ",
+	"gUnExLxf5EwnxMg/IstaokQmynHegIzTDM145VYFwB7X/nfbn4I5sbzXqH0YJ1Ku55w50MmFgd0Ggcw8",
+	"g/AlYkIcbqKy2YbL2Jvael7IEmhsJAlGvoO+qoMC2OFaRHrtcSPGUObU4628pVKjK7gkVpBw109bkHDQ",
+	"qI5f4lhNRSKW/JoYjbKtnx2VeLluDnKKNgND9CMPXpoHxbgfFiwDnkKX90Vv4ZIzHfxhQfMS2pwncrjC",
+	"N7Z9P7TPHxnPzCSdRWYNeaQrojb21u968S8ECGaDfDOlVjVaU2A+FZAavq1WnBYKFClKTSSbznQ//mN5",
+	"SleaCukeBoLWzlrkNAWynLEciOPKhGWKpGJuzcNTESLzXWU01I0u+HyrCIHarnlBijEds5zpVS8SwTcK",
+	"Yeh2u13IPocSYgRq/oLqxS7WyLMisq5QeYnW6WrwBlwa5OeW1YaBI5sN1L63tORPzQHkpZ9EnoHcTyHd",
+	"meQ+u2JY8XCnHDoi2KIaWmP3uqdqORM5EEvtZCLFnBwTLcj9/zx6ePcE9XA6L3Iz0sl3Dx8++vbhw+Nv",
+	"H3x7/Pibb04enXxjiIlqDdIM9p+vjv/3j5O7j9//cXz38fur4+Tk8fXX/wiB3FB3/4szRDjPlSohOxeX",
+	"wLvYV5BKCN8N2r+xEdv4UNfIab5N/OghEBsSOWfzwC2WAldCWpmrjQL0cjmBFY0ZKGyKEg1iotSGYQYp",
+	"aFe6nUPGKL+YM15qCFhYf6ZFTvndl8BAnjlvgGPgRsAnM7oAdLXVq2wvsQcvrWw9AdPvugnKEnXDOlTB",
+	"MAT6F0JclsW+rMqO8lzDfA/luTFIgDStY6kX0auyALkQnyDv6W9qrq/xcnUzbFhu1GZEwwepHn7Xo9x2",
+	"OHRdDtF9hKH9Egxxbbqkeojl+95DL42s+1rCgsEyAMJ+gKGTCeNOLulqqHORQY7qds5gkhBmPeZ6KYgW",
+	"ZTrrdwDH/ZaSMaUpT8FJVj0Gbgo2vSD/1pFkSCkSmubbDY32qQ691EKQG6e9nWREjb4TR2P8JGzfkrU0",
+	"jPs+6GXzfc0e6G3xpo+VKImiy1NC89xeK3rGFElnlDt9vtaBG1EL95tHMXIALOQa6w4B8RegMgi/GxPV",
+	"5+KWbcIJ77WUIiCB0GxXr4R9YxzW7ChPZ1a53A6GuNW6PzDDerFbRWOtSb3RzXeMhdPemoQD982v5l9g",
+	"GUVZLxj7k+uh3DhAJ87VuzHwJA7WyHJfV9pGe7mzKkIm4AnNd7gB34gctkK0DrnBsSNrjYjj3kPcZjYh",
+	"6HQGfVUA93alNXQ1Ygt28ql7K0kP9rOzhF2L1r1kYZoF7nrk19ZVTcTEBc7ljIeVgCpaop80XdkN7Ht+",
+	"EUkNznoXGywDr5zM37D2pUJKeyckIyVKnK3kaQ5UBg1+6NO5qeB4H1dZf1gXIF6DKHLYl9u4o3dzbhM7",
+	"uwPfDhtYQQ6Tplw7FiIHym+HScTuCVxTHFxPUU7pAs1vxRGcliXUgwy/scjqntGQey5NodAxXuR/vVAz",
+	"aj1cGy8YfAhf02wBFzNRyr4cpT6DwYVkdNWhuGCEhgu9CA6yWzBAZRAJSPkb7GhVHEhwCZuMCOZXXUoe",
+	"/9WoaLFfLeOKh6VdFCAvGojpiRfPB7ez6cqyZ3DVNn5s4K+RwJkWBXnMNUBQk+aoAbbgyfSxYu2r6lNC",
+	"Vgn5izBOULHqBt7FYVIz8wdNZv4gwMzrOE6aZejTovnrxgG0YaLrkQpZIJhLaTrOIcGodefaDoaZZaCp",
+	"tc52fpowyLOIs5xK7QPZpVUinR9a2XjQYDQStxpGcDIOn/SF0lCE4iHrqFKxDMazaapLFaFmpiM3hv2i",
+	"6ZCUbKtBGn/1o1YzJxYLQYKSQky6jBQjgjtbRSe8ssZpA9sc6AIUKYsllVU4X/9wpnCg4JagwF1D/tqR",
+	"frivCBwq39KNbEY97TlTKcpib2f15UYP7/utQYXm9RAU/qek3h8XCKiF7MIwtwDOGqZBlyLCiViAzGlB",
+	"5qXS1mRt01LcUKNwBG6u4AJ3o2L6hHkC9xl5At++GLvf2+tcUMkw4txwB8YtLZmP4xUZA+NTooUg07zE",
+	"9fVgnlzoC5UKCdlFbYLt4XTaNVaC8uwCpLRq8ZqaklFzc5A3lGcEn0lIQZlU1jEgAR3AzozSRxsycxUS",
+	"UqbWF7jlJQkpzfO+FqUbQA3Rvhdq01KTsugDiHV5oA7iaKyiRW0d0LXB0sLiGqmv0XWydt7WoRWiu/Bx",
+	"hjIgwM/QV9ufCTnfbih6kE7jgdrW4mmktdpjNRF5LpaQkRXoPvHbLVU+Ek5hZAia50QUwIlXp/udXRa5",
+	"7s1QvcFTmUYCADIXcKVqBiSmq3gmhEfj+n1mR3RrbBoJPFotWqr9hQjjjZVSowb2DXbpXexqbpjwCpTI",
+	"S88Cbx4z4E1aXRTWlpGNyHOP9Q9t60QT1umSSPGVfkCYvkmKQuXFbQeI4UajkFzEcWllgy1gaPlbGmDd",
+	"5pa4CZytkLJN+zYPVQuKwCgMDhvcFoVH09XTQ/TaeFNvzie6sXencdlsdPC8ibk5hzhAG60CLoCwcxz8",
+	"ykn3XJQ8Y5lNJ7YnxG6wxxWwAJmxdCvJ/OYe6wRiuu93OFEGrFEC6n82Blp4cI0ib1l9C6PHSZ827SwL",
+	"0saLooFh2vYI1YtER0ogHqmW6RMjQzGtMD1c+vxtbr2LRHCU7CmxeWzr+v/OcYE7ew87sHlb+9fWUzhT",
+	"5y3ax8drIJGWUgLXxPwCPKNcqzMDIsgnLlKHobXBPYcKopB8w4HBM4Lp/Ewn5BilGgPmDHK2sBnAPY6K",
+	"ny9oaWZZPx3Vh+pvWaz1Y2e4U64FEXrWMytvz8ACZqOh7U4dYBsxBg7LoVPz1ht+1wRiNg1YOx5/Q/4/",
+	"+Z3lSnCzQZALmveTLHOx7KkF3ThC2r5op0rsBoIbZlkoBo6O8x2c/xMmLR/se2oih0bNaZ4bllEfccKy",
+	"yirSxcCJYTf3T8lyJhQQDPM31GYEXXVGjk/NhwnNc0XEZEJKbp6IWBb2Iji7vAaJVQD0wAnC3ogw8VCk",
+	"+ZhNS1GqHtaUVJR5RqaCADNnjCzpKnz6gwkvPsnljMDHkuaWe7vEaDKxBDRw9ktt5QqFxxg0UkWa8WTJ",
+	"XuawngEVjUAnxbIdfFN4igLzLqnkPi67r9kzHCQ18kvyaR6IyqRBJY3ZKvhGqW4o4TdgrewZUgbhtNN1",
+	"C/BNJWS3sC3y8bmLAg8HLFwECyq46j7bdmjzrzGnxAfbrbkFWolqmqpLn6fWO3n3h0UkLG9DUMWkkSqw",
+	"b07ADgEaPdPdXKrK3pH/O9dG2G5FQp85mglZ3xhqXhWUCXiECox8IM4h08skvHMCDRMyGKVqEEcKkMRu",
+	"u99ubicfR7bsPhsDAuonK3fx9nfwqcHyfpwBrw9pvsUHN+UHGg4eNF1XAaNWzskZ1u1CcdoyDqPDGYGH",
+	"pJSjC8Uwn6CgE5KUq9JGVUaiTVLq5MNrG4YQTl5yGUsVfwkmLzXNkRV51sfVQyDGq58JHpBWwadi90sE",
+	"dzx/G766rlPzZWxllhXfuqHFcJLt0fAWsrNI5ZKKbzasBehtuOu9hvZTzHdoR3jrz4Efwpmfa1JshEiE",
+	"ohm2lQ859/Fz+wSKWcQOn912bovnFaUeJpTtWVgcinokggvdaOGPRIBuiFDreYUzzPfarc6LfSUSNJdT",
+	"pS9KF2O051GSsBCX/UcKccsqds4VBaoX39x7FOT7k7BNebtxqON5peiul5P6tItwMWd8l8d5mebA+rpx",
+	"2xlLfd5wGdMXjO/6hih1z1d2WNGGzKhqnPaq11ZUQayCdOIxFELqb7Uh2fNfy2MrDhvkqb9VokhHAyrn",
+	"kF1UxV96QGdMFVw0hac+1shGlZoej2dsCiEDxtufnty9/80j71NwFlHItharmFF1oWVpQ5m69tADH4lY",
+	"+sdOZ2Wr59GwT+tm6admSPgTFZ6LHZFz80PbtwCgjeuM7rcsiBbEVh9sRBX4iIIzcveE2OIZCBdrl+tn",
+	"jJaMTqHn1F4A7jE7sQP3dHIZ0Panr3AGS8NxuL6pDoCTNbbVPuBJs4xTl2aSNR7SwHaDtdXnr7G/Lser",
+	"Tn6Q9SEP+14ymOxQkmSn+KotsIyvau/Lvrm5m1/5vzM9yySNeywPUI40oDyFFocKd1oaPfCt2bNbjxdO",
+	"EQ7IlYFK1FHd+zOtC1vXlfGJ6J7Ic4w+zaYgE3fKsJQJassfSyiBYJmnyiuKhh2g83vv+Dv+PFOESnOR",
+	"pGxOc6w0dWqO7YqUCjCW6NFDMmZa2bqxlPz77atffGmGTIAiXOh7BI+iHaoVgH2PfKD6A0EeRceitHlE",
+	"BVX6lNQVyd/xr9pFH74O1ihPHN+ZA+Wq5viVK87VAqPavOw4ENP3yAumtCvywjgp6BTUGflgFKEPWCJ8",
+	"Bu+4LTvt71XLywykfOFwV3rAJUIBz+6RHynLSwl2165sL7FR2op8ZVb++OE3335d1enCOG/yIRUZfLDQ",
+	"/FDFUn8giq7UO15HUN8jP7KpHR7h5oxoOBcqTjQnGdX0lOQipTmRZQ4K8ZiBgSWZ0xVR4MueQ2EWPreF",
+	"xV2k9WgC2gZHL0Aq52fyMV+0YKPT0YN7x/ceuGBhpNejxclR1iwKOLVFLcwZwyDD59nodGQgXpcOXKuB",
+	"fP/4eEP9493qHteTBCof1+vEn1z97/CA1QobpZTNtTCfU7lyp8yCGN1QuRCX6JfGGEaM16dThcffXnTv",
+	"zesGWJYrB6H0L9Av4ZDQ8cliXdDUxfIGgM3vM2HT/g0vI2PIhREKtGhAxVJvDZWiSoaL0o/LlzsoeHCG",
+	"AHjc8vYHzQ8LkKuxyFYYOFIp1B2w4B0bAMSTLHvtI3Vc+sb3wmZoDgKCOpn3un2PaVnCdQf2J7dAmpiV",
+	"NwDon2TmurJEjrcJmdN0hgbl1Jah3kaeR1cWYdfrPTYiXv/6kaNWx4Dr98hA01kXvzax8KAobmUw9sLy",
+	"bTAgGzm1wvuMi+UA+LY7rFB+RxHMukRJggsNvuwErKy+grmbvUngSFcmrSjHclavA8LTzRBi6O6X/Y9N",
+	"DT87ZlLVftIzYJLYUlMqwsX2PCVBJoh1tc5dpasDcUFfXutWmWCzYFgAp9bGOgBOcR5CLUIxOM9h0Yi/",
+	"aiaW3JZjEbYi325H4ugK/15bzSQHa49uY/ANGqNrFB7yeIQg6Y3h+4PS7sTDcvhDkAT7kOgG8d+sj9J7",
+	"h8NFra1H+ZjX6A+IKT9FAFd+hcPI7G40Vz0ZjEY4L4R0WXcOd37KitLdF0dX9p/rTSL8b3WPmIMCKybG",
+	"O1f2EGK8KzBdWZV9rxhwpjxrZsAvDQ9xFj+pbGOrIEB3PQ2NljzrNFth48iGLc1D7c92nCEqd+MM51VB",
+	"kuHvnHaLnVuWy6omOAGamoklmVO+GoCi/sUW4AzUNiweWR2qQs6C5CK7sWcOmqlcAEalTVtj2nUPSjha",
+	"OtvfgUjCmxYPSRTr5su/J1m8AE0oR7XYZUNbEqlY9JQtgDdJZgeKSFt9hGJMu9Ft6IDwbMwSYd6N1Q5z",
+	"33FYYlh5p82R95EhC2/KLVj1YE9GHTszL+kl/C1B/ZZNOVrH2xm+eFN6lbYL4+00e+TCQrfTre/9eHB4",
+	"mokiIDWLHYZsi3Kcs9QM6BNq/PTWvI6fXYHfoYk3ihUsgrxRUn5qHzmkSoPsLgR/+8MwUt9KlJhKEuCz",
+	"B+ELCLdz10Vqp+HXusGaKQ5xEbdaVt2yVcCFZHYwvhKlVARrqaP4jXnrRJZcEVEOcn/QS6jFMUMAiRfQ",
+	"BAds2LaLbGbPz9EV/r0+gk8aXNHEGxNUsvVp3484Tns/4DqeVp2JD8VAbVZE5C7yKRN7Yux7mLrGqZYY",
+	"qAs9viGKXMWuz48jV5ThaaN99NAnfK3uwy1L2rEzjm40F7k7hPJFbRzAmKaX1o7rCoHRHYXqdTrB+OYv",
+	"gU5wIYelk1ZNic9AJ5gKEDRquijzAdyUGNqBpLLWQuGM0EaRAsKUj7LA55h23hVCNbGVffqSFNRd76Li",
+	"le+Md0AA+ylCLioMFRkEulZHiKlg7ov9ZK0k3Ai90p83tFMPv+lTYXqDceU7/l5FmNodRdA2HZrNdY3p",
+	"b9BOYhn5GDCzAO/RgMiEvqdYn+7hx6FAufj8Y8jFctv8VXOzG7cvD6NNyGxtXxX1jkSeAUaCVpkr/gtr",
+	"NgiWy9vuwKh7+vd82rbuj2tejjccXXmYbjTA/+Aifg/KI6I6MPhsqz2ZxCvuxmrc0+OVbrkubOfHQ3GO",
+	"tsupERzbw+vUi2Lj+P5UCNm0160z4hlWczkjQNOZhdIdRVLKBWcpzR2cPNiYrPs4JoRxgkfijLSNQCqp",
+	"IwjFxEUW2m7arr65LdiDzg5ly5H4QiRuvUlHszBfv/DsfUd6zNsEuX4Og8Tn8D+MDcYGYHofj7KRni+Y",
+	"626P4LE5l66Pd9YIDGCKKJCL4S2LMZJpJndH5Ycf6wzNgzGHao5DShC/+5hDRVSpCpYyUSrCxTIhc6E0",
+	"wSxnH+bfiUQ8gFjRaPu3s2BRJdseViSpk+RjwzUKTvQL13j2me7DHLthHcrX+UKIy1+LA6lP7UZet6w9",
+	"uf5rodAaazXBm4FQNUxsyHmz45GYoLusWdolMScWQxF1I/gdTWwuJ9Od3Cr1JK4+1YWBD0ARr4XSL11G",
+	"9Bdpnm3XaLxd82xUGrSK8QB09G9hyHMpamIarwglOeOXIdlvM4kcFY2ySwcgFTu6p5YvA9nHw87tC1cF",
+	"cG50OAXAh7rjKUGskSWWuZrTSzgjXOgZ49Pa9rILEfC68VlMf/K90Q4IRj9FRIz1ixyIBdcl1XxhxlZR",
+	"xgCXPYCE9Kmf4hSvcRcednWYYf/af9j1SmvikjDuVQPba5vmcXvIjYSx93Gyr3q7RbUD3/9tV+RT9Wri",
+	"braDHRe7ssBx8Rsb5qikkFdtCmSdwosBWnQONv7Ph33XLSzdAfJrOZCT+EmWub54B4v69r37bleCaM56",
+	"mNyXHxGRhCKCa2wWjHPILDdsNZfsYnTLwTq6MiNeb75WKtwd9JjELxXfl3HvjAg7VBX36o5Cb3F+mHOy",
+	"XZW08/R92rGxfog+mjGlhVxtR/hP7sHP47PxXqVh2GMruMvX+G30tbUhqxZSdxSxTTMTYq3qHXvM5yCD",
+	"KHrROKeOUsEVU6ivRVH7WooFPG08eMiEMbQZxhJW7Y97oxYnqSL2iJbgcuQV+wvIVIAigtvWTpQjNqVz",
+	"5Axp2uyITDi78xHaSc3KIuKS7UNyM9t8xJ21Ze1mMW/ZXz2IivE0L33HnDhJPa8e+xsRFOXOb8AUcUam",
+	"Nn2dWeeEi3+3Op29OO6Sk+FJLOgTHt61MxT5LID7xnOxa+Z1/dSedLOpc9968Y6Abf/1m1e/3UUnSSbS",
+	"0pdTHiCXHn1N1uPSNCfiNwmhqjHzV78/eIofv74tx8vHui9aDEO+ddoBj7WfIoAY7AU1hATwk1iSJWC/",
+	"+oZddw6g12pv+bo+w2Y/7S3BffQtr+J4ghIOiyUzQYT52uUNcWJ8etpSyEubiqZ85pqwFfIJlgQdOLg5",
+	"BnffEuaQ1nnf2udLNdCvtx7629nof+WZwKhoX2+ut0XWGpM3m6beuGf+mxML6qLVPoSFMm071BELAzJe",
+	"kZUoBz6Xw7hcPb8/unL/bbR1vK2MlwfDV9WxIcxNVd3QYRg/hFdxLf8UkswgrxKCqSa2tQx2mDyMUX3L",
+	"024iDA/uj8Q+dgwH6b+tIaPC7R3ly4YSxKW2pZ2jBowvHbdzMDrVZs760j1zUJ+hneKQAUFtP5ey6qXv",
+	"xFW7Uj4n5j5HoEzdDPlAche2lPlSha61RpF/M4nrNZUaoyJswxtD8msnwIhj/toar2xvJ2u0wGbHY9BL",
+	"ALTJzHcR2CxR3U4chaevL4M8joed+1bjKBBrw8VRNEjt6Kr+sFkqbLrYDhzk9lxDMNuw4a8aNsLNWTQb",
+	"nTF3D24bPmpdtUEeM24OEOW5xfhS1RmOV4ur6ojctoY3nBRiZnAhyEsh9YxkwpywTiTyMGpdMGzEd+rp",
+	"DRLXneiWYoxvHuzc7M225fX1nlvCt0Uyx8+nCVo9bdgcsf+aCGqkwKMr63XZyLRdVYL/5szfJ41MTqzT",
+	"5ev0+wCGWaXa3q7hxczyiwsZ64mqoyGkrh1XFs82NkupCOQgVtNGt+0vKNWYKtfEeZhSrU+wYQtRYg5Y",
+	"BApyBXcUqRviJZZx6VJywvQZWgxt86y1ZOSSZ23P/La0Y91qXxVlAvVTh4R4PUuwBnWjyvsQWcg0ndW1",
+	"XdFXMl6RjK7OfG15BeCC/cSSJ7bVns2FM1i6o27nRu93G3WZp+0zkmE/4OBNLMU8nG6bWRGi1yyYLxif",
+	"ZO2u3nkK2/ZwzjLOpjOtSIFK7wzMlIp89fzJL08wlu/ryPx/2dMQSv799fxpsC5ooy8FYtB1pPjjvWGE",
+	"NqnPoraU+eh0dIQM0tHBVY00VzC9+qYu43m1Ji20vqsyGOuhXFBG9UUd8nrVzBZvf2Fz3a7fX/9fAAAA",
+	"//8=",
 }
 
 // decodeSpec returns the embedded OpenAPI spec as raw JSON bytes,

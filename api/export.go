@@ -20,3 +20,13 @@ func (s *Server) ExportLedger(ctx context.Context, r ExportLedgerRequestObject) 
 	go func() { in.CloseWithError(v.Export(ctx, in)) }()
 	return ExportLedger200ApplicationjsonlResponse{Body: out}, nil
 }
+
+// GetProvenance tells the ledger in the words of W3C PROV.
+func (s *Server) GetProvenance(ctx context.Context, r GetProvenanceRequestObject) (GetProvenanceResponseObject, error) {
+	v, err := s.Ledger.Volume(ctx, r.Volume)
+	if err != nil {
+		return nil, err
+	}
+	p, err := v.Provenance(ctx)
+	return GetProvenance200JSONResponse(p), err
+}

@@ -21,6 +21,7 @@ var rolesOf = map[string][]tasks.Role{
 	"ListEntries": anyone, "GetEntry": anyone, "ListNeurons": anyone, "GetNeuron": anyone, "GetNeuronHistory": anyone,
 	"ListTasks": anyone, "GetTask": anyone, "ListFindings": anyone, "PreviewMerge": anyone, "PreviewSplit": anyone,
 	"GetCheckpoint": anyone, "MakeCheckpoint": anyone, "GetCheckpointKey": anyone, "ProveInclusion": anyone, "ProveConsistency": anyone,
+	"GetProvenance": anyone,
 	"ExportLedger":  anyone, // who may read the entries may take them along
 	"GetThroughput": anyone, // their own; throughput.go keeps everybody else's for leads
 

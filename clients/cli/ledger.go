@@ -1,8 +1,10 @@
 package cli
 
 import (
+	"context"
 	"fmt"
 	"io"
+	"net/http"
 	"os"
 
 	"github.com/spf13/cobra"
@@ -74,14 +76,23 @@ func (a *app) printText(answer any, text string) error {
 
 func (a *app) ledgerExportCommand() *cobra.Command {
 	var file string
+	var prov bool
 	cmd := &cobra.Command{
-		Use:     "export",
-		Short:   "Write the whole ledger as JSON Lines, which fettle ledger verify checks without a server",
-		Long:    "Write the whole ledger as JSON Lines: a header, the canonical bytes of each entry with their hash, and the signed\ncheckpoints. It names people: treat it as personal data.",
-		Example: `  fettle ledger export --file cricket-ganglion.jsonl`,
-		Args:    cobra.NoArgs,
+		Use:   "export",
+		Short: "Write the whole ledger as JSON Lines, which fettle ledger verify checks without a server",
+		Long: `Write the whole ledger as JSON Lines: a header, the canonical bytes of each entry with their hash, and the signed checkpoints.
+With --prov, tell instead who made which segments of which, as a PROV-JSON document (W3C PROV) for other programs.
+
+Both name people: treat them as personal data.`,
+		Example: `  fettle ledger export --file cricket-ganglion.jsonl
+  fettle ledger export --prov --file cricket-ganglion.prov.json`,
+		Args: cobra.NoArgs,
 		RunE: func(cmd *cobra.Command, _ []string) (err error) {
-			body, err := a.exported(cmd)
+			ask := a.ledgerLines
+			if prov {
+				ask = a.provenance
+			}
+			body, err := a.streamed(cmd, ask)
 			if err != nil {
 				return err
 			}
@@ -93,6 +104,7 @@ func (a *app) ledgerExportCommand() *cobra.Command {
 			return saveTo(file, body)
 		},
 	}
+	cmd.Flags().BoolVar(&prov, "prov", false, "as PROV-JSON")
 	cmd.Flags().StringVar(&file, "file", "", "write to `FILE`, which must not exist yet")
 	return cmd
 }
@@ -113,13 +125,21 @@ func saveTo(file string, r io.Reader) error {
 	return err
 }
 
-// exported asks for the ledger as a stream.
-func (a *app) exported(cmd *cobra.Command) (io.ReadCloser, error) {
+func (a *app) ledgerLines(ctx context.Context, volume string) (*http.Response, error) {
+	return a.client.ExportLedger(ctx, volume)
+}
+
+func (a *app) provenance(ctx context.Context, volume string) (*http.Response, error) {
+	return a.client.GetProvenance(ctx, volume)
+}
+
+// streamed asks for something about the volume that is read as it comes.
+func (a *app) streamed(cmd *cobra.Command, ask func(context.Context, string) (*http.Response, error)) (io.ReadCloser, error) {
 	name, err := a.volumeName(cmd.Context())
 	if err != nil {
 		return nil, err
 	}
-	resp, err := a.client.ExportLedger(cmd.Context(), name)
+	resp, err := ask(cmd.Context(), name)
 	if err != nil {
 		return nil, err
 	}

@@ -57,7 +57,7 @@ digest and a checkpoint.`,
 // opened is the export in a file, or the one that the server makes now.
 func (a *app) opened(cmd *cobra.Command, where string) (io.ReadCloser, error) {
 	if where == "live" {
-		return a.exported(cmd)
+		return a.streamed(cmd, a.ledgerLines)
 	}
 	f, err := os.Open(where)
 	if err != nil {

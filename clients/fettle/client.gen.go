@@ -1690,6 +1690,11 @@ type ClientInterface interface {
 	// Corresponds with GET /v1/volumes/{volume}/proofs/inclusion (the `ProveInclusion` operationId).
 	ProveInclusion(ctx context.Context, volume VolumeName, params *ProveInclusionParams, reqEditors ...RequestEditorFn) (*http.Response, error)
 
+	// GetProvenance Who made which segments of which, as PROV-JSON (W3C PROV)
+	//
+	// Corresponds with GET /v1/volumes/{volume}/provenance (the `GetProvenance` operationId).
+	GetProvenance(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error)
+
 	// GetQuality How well the segments meet the delivered truth
 	//
 	// Corresponds with GET /v1/volumes/{volume}/quality (the `GetQuality` operationId).
@@ -2527,6 +2532,21 @@ func (c *Client) ProveConsistency(ctx context.Context, volume VolumeName, params
 // Corresponds with GET /v1/volumes/{volume}/proofs/inclusion (the `ProveInclusion` operationId).
 func (c *Client) ProveInclusion(ctx context.Context, volume VolumeName, params *ProveInclusionParams, reqEditors ...RequestEditorFn) (*http.Response, error) {
 	req, err := NewProveInclusionRequest(c.Server, volume, params)
+	if err != nil {
+		return nil, err
+	}
+	req = req.WithContext(ctx)
+	if err := c.applyEditors(ctx, req, reqEditors); err != nil {
+		return nil, err
+	}
+	return c.Client.Do(req)
+}
+
+// GetProvenance Who made which segments of which, as PROV-JSON (W3C PROV)
+//
+// Corresponds with GET /v1/volumes/{volume}/provenance (the `GetProvenance` operationId).
+func (c *Client) GetProvenance(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewGetProvenanceRequest(c.Server, volume)
 	if err != nil {
 		return nil, err
 	}
@@ -4548,6 +4568,40 @@ func NewProveInclusionRequest(server string, volume VolumeName, params *ProveInc
 	return req, nil
 }
 
+// NewGetProvenanceRequest constructs an http.Request for the GetProvenance method
+func NewGetProvenanceRequest(server string, volume VolumeName) (*http.Request, error) {
+	var err error
+
+	var pathParam0 string
+
+	pathParam0, err = runtime.StyleParamWithOptions("simple", false, "volume", volume, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationPath, Type: "string", Format: ""})
+	if err != nil {
+		return nil, err
+	}
+
+	serverURL, err := url.Parse(server)
+	if err != nil {
+		return nil, err
+	}
+
+	operationPath := fmt.Sprintf("/v1/volumes/%s/provenance", pathParam0)
+	if operationPath[0] == '/' {
+		operationPath = "." + operationPath
+	}
+
+	queryURL, err := serverURL.Parse(operationPath)
+	if err != nil {
+		return nil, err
+	}
+
+	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
+	if err != nil {
+		return nil, err
+	}
+
+	return req, nil
+}
+
 // NewGetQualityRequest constructs an http.Request for the GetQuality method
 func NewGetQualityRequest(server string, volume VolumeName, params *GetQualityParams) (*http.Request, error) {
 	var err error
@@ -5805,6 +5859,13 @@ type ClientWithResponsesInterface interface {
 	//
 	// Corresponds with GET /v1/volumes/{volume}/proofs/inclusion (the `ProveInclusion` operationId).
 	ProveInclusionWithResponse(ctx context.Context, volume VolumeName, params *ProveInclusionParams, reqEditors ...RequestEditorFn) (*ProveInclusionResponse, error)
+
+	// GetProvenanceWithResponse Who made which segments of which, as PROV-JSON (W3C PROV)
+	//
+	// Returns a wrapper object for the known response body format(s).
+	//
+	// Corresponds with GET /v1/volumes/{volume}/provenance (the `GetProvenance` operationId).
+	GetProvenanceWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*GetProvenanceResponse, error)
 
 	// GetQualityWithResponse How well the segments meet the delivered truth
 	//
@@ -7558,6 +7619,54 @@ func (r ProveInclusionResponse) ContentType() string {
 	return ""
 }
 
+type GetProvenanceResponse struct {
+	Body         []byte
+	HTTPResponse *http.Response
+	// JSON200 the response for an HTTP 200 `application/json` response
+	JSON200 *map[string]interface{}
+	// ApplicationproblemJSONDefault the response for an HTTP default `application/problem+json` response
+	ApplicationproblemJSONDefault *Problem
+}
+
+// GetJSON200 returns the response for an HTTP 200 `application/json` response
+func (r GetProvenanceResponse) GetJSON200() *map[string]interface{} {
+	return r.JSON200
+}
+
+// GetApplicationproblemJSONDefault returns the response for an HTTP default `application/problem+json` response
+func (r GetProvenanceResponse) GetApplicationproblemJSONDefault() *Problem {
+	return r.ApplicationproblemJSONDefault
+}
+
+// GetBody returns the raw response body bytes
+func (r GetProvenanceResponse) GetBody() []byte {
+	return r.Body
+}
+
+// Status returns HTTPResponse.Status
+func (r GetProvenanceResponse) Status() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Status
+	}
+	return http.StatusText(0)
+}
+
+// StatusCode returns HTTPResponse.StatusCode
+func (r GetProvenanceResponse) StatusCode() int {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.StatusCode
+	}
+	return 0
+}
+
+// ContentType is a convenience method to retrieve the Content-Type value from the HTTP response headers
+func (r GetProvenanceResponse) ContentType() string {
+	if r.HTTPResponse != nil {
+		return r.HTTPResponse.Header.Get("Content-Type")
+	}
+	return ""
+}
+
 type GetQualityResponse struct {
 	Body         []byte
 	HTTPResponse *http.Response
@@ -8828,6 +8937,19 @@ func (c *ClientWithResponses) ProveInclusionWithResponse(ctx context.Context, vo
 		return nil, err
 	}
 	return ParseProveInclusionResponse(rsp)
+}
+
+// GetProvenanceWithResponse Who made which segments of which, as PROV-JSON (W3C PROV)
+//
+// Returns a wrapper object for the known response body format(s).
+//
+// Corresponds with GET /v1/volumes/{volume}/provenance (the `GetProvenance` operationId).
+func (c *ClientWithResponses) GetProvenanceWithResponse(ctx context.Context, volume VolumeName, reqEditors ...RequestEditorFn) (*GetProvenanceResponse, error) {
+	rsp, err := c.GetProvenance(ctx, volume, reqEditors...)
+	if err != nil {
+		return nil, err
+	}
+	return ParseGetProvenanceResponse(rsp)
 }
 
 // GetQualityWithResponse How well the segments meet the delivered truth
@@ -10162,6 +10284,39 @@ func ParseProveInclusionResponse(rsp *http.Response) (*ProveInclusionResponse, e
 	switch {
 	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
 		var dest Proof
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.JSON200 = &dest
+
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && true:
+		var dest Problem
+		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
+			return nil, err
+		}
+		response.ApplicationproblemJSONDefault = &dest
+
+	}
+
+	return response, nil
+}
+
+// ParseGetProvenanceResponse parses an HTTP response from a GetProvenanceWithResponse call
+func ParseGetProvenanceResponse(rsp *http.Response) (*GetProvenanceResponse, error) {
+	bodyBytes, err := io.ReadAll(rsp.Body)
+	defer func() { _ = rsp.Body.Close() }()
+	if err != nil {
+		return nil, err
+	}
+
+	response := &GetProvenanceResponse{
+		Body:         bodyBytes,
+		HTTPResponse: rsp,
+	}
+
+	switch {
+	case strings.Contains(rsp.Header.Get("Content-Type"), "json") && rsp.StatusCode == 200:
+		var dest map[string]interface{}
 		if err := json.Unmarshal(bodyBytes, &dest); err != nil {
 			return nil, err
 		}
