@@ -39,7 +39,7 @@ var rooms = map[string]rule{
 		because: "the way to PostgreSQL knows no table"},
 	"internal/pgserver": {uses: []string{"internal/fault"}, never: []string{echo, jobs},
 		because: "a server knows nothing of what is in it"},
-	"migrations": {uses: []string{"internal/fault"}, never: []string{echo},
+	"migrations": {uses: []string{"internal/fault", "internal/pg"}, never: []string{echo},
 		because: "the tables stand before every room that reads them"},
 	"internal/pgtest": {uses: []string{"internal/pg", "internal/pgserver", "migrations"},
 		because: "a test database knows no subject, or the ledger's own tests would import in a circle"},
@@ -52,7 +52,7 @@ var rooms = map[string]rule{
 		because: "what was delivered does not know what people said later"},
 	"ledger": {uses: []string{"internal/fault", "internal/pg", "ledger/base", "ledger/cut", "ledger/proof"}, never: []string{echo, jobs},
 		because: "the truth does not know who reads it"},
-	"ledger/ledgertest": {uses: []string{"internal/fault", "internal/pg", "internal/pgtest", "internal/synth", "ledger", "ledger/base"},
+	"ledger/ledgertest": {uses: []string{"internal/fault", "internal/pg", "internal/pgtest", "internal/synth", "ledger", "ledger/base", "migrations"},
 		because: "it helps the tests of every room above the ledger"},
 
 	"triage": {uses: []string{"internal/fault", "internal/pg", "internal/stats", "ledger", "ledger/base", "ledger/cut"}, never: []string{echo, jobs},
@@ -61,7 +61,7 @@ var rooms = map[string]rule{
 		because: "human work is the same by HTTP, by a job, or in a test"},
 	"worker": {uses: []string{"internal/fault", "internal/pg", "ledger", "migrations", "tasks", "triage"}, never: []string{echo},
 		because: "background work and HTTP meet in the daemon only; the migrations say where River's tables are"},
-	"api": {uses: []string{"internal/fault", "internal/pg", "ledger", "ledger/base", "tasks", "triage"}, never: []string{jobs},
+	"api": {uses: []string{"internal/fault", "internal/pg", "ledger", "ledger/base", "ledger/proof", "tasks", "triage"}, never: []string{jobs},
 		because: "background work and HTTP meet in the daemon only"},
 
 	"clients/fettle": {uses: []string{"internal/fault"}, never: []string{driver, echo},
