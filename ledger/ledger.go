@@ -85,6 +85,9 @@ type Volume struct {
 	state *state
 
 	line postLine // callers that wait to post
+
+	pastMu sync.Mutex
+	pasts  []*past // positions that were asked about lately
 }
 
 func openVolume(ctx context.Context, pool *pgxpool.Pool, id int32) (*Volume, error) {

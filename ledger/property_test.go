@@ -89,6 +89,26 @@ func (w *walk) segments(v *ledger.Volume, at ledger.At) []ledger.ID {
 	return out
 }
 
+// asMany asks about so many supervoxels at once that all of the past is read, and returns what it says of each.
+func (w *walk) asMany(v *ledger.Volume, at ledger.At) []ledger.ID {
+	w.t.Helper()
+	const many = 600
+	var asked []ledger.ID
+	for len(asked) < many {
+		asked = append(asked, w.ids...)
+	}
+	out, err := v.SegmentsOf(w.t.Context(), asked, at)
+	if err != nil {
+		w.t.Fatal(err)
+	}
+	for i := range out {
+		if out[i] != out[i%len(w.ids)] {
+			w.t.Fatalf("one supervoxel is in %s and %s", out[i], out[i%len(w.ids)])
+		}
+	}
+	return out[:len(w.ids)]
+}
+
 // step posts one random entry. Refusals that the rules ask for are part of the walk.
 func (w *walk) step() {
 	d := ledger.Draft{ID: uuid.Must(uuid.NewV7()), Person: "alder", Reason: "walk"}
@@ -208,6 +228,9 @@ func (w *walk) checkPast(v *ledger.Volume) {
 		got := w.segments(v, ledger.AtPosition(int64(p)))
 		if !slices.Equal(got, want) {
 			w.t.Errorf("position %d answers otherwise than when it was the last", p)
+		}
+		if !slices.Equal(w.asMany(v, ledger.AtPosition(int64(p))), want) {
+			w.t.Errorf("position %d answers otherwise when it is asked about many", p)
 		}
 		members := make(map[ledger.ID][]ledger.ID)
 		for i, s := range got {

@@ -49,7 +49,8 @@ func (v *Volume) Resolve(ctx context.Context, at At) (int64, error) {
 func (a At) now() bool { return a.Position == nil && a.Time == nil }
 
 // SegmentsOf tells each supervoxel's segment, in the order asked. Unknown supervoxels are fault.NotFound.
-// Now: O(log) a supervoxel in memory. At a past position: one query for all of them.
+// Now: O(log) a supervoxel in memory. At a past position: one query for all of them, or for many the whole of what was in force
+// then, which is remembered.
 func (v *Volume) SegmentsOf(ctx context.Context, ids []ID, at At) ([]ID, error) {
 	ord, err := v.ordinals(ids)
 	if err != nil {
@@ -68,20 +69,31 @@ func (v *Volume) SegmentsOf(ctx context.Context, ids []ID, at At) ([]ID, error) 
 	defer v.mu.RUnlock()
 	out := make([]ID, len(ord))
 	for i, g := range ord {
-		out[i] = v.state.segmentOf(v.state.groupOf(g)).ID
+		out[i] = v.state.idOf(v.state.groupOf(g))
 	}
 	return out, nil
 }
 
-// segmentsThen answers for a past position from the tables: the piece that covered the ordinal, or its home group;
+// segmentsThen answers for a past position: for a few supervoxels from the tables, by the piece that covered the ordinal, or its home group;
 // then the segment that group was, or the delivered one when no entry had touched it.
 func (v *Volume) segmentsThen(ctx context.Context, ord []uint32, p int64) ([]ID, error) {
+	if len(ord) >= pastFrom {
+		then, err := v.pastAt(ctx, p)
+		if err != nil {
+			return nil, err
+		}
+		out := make([]ID, len(ord))
+		for i, g := range ord {
+			out[i] = v.segmentIn(then, g)
+		}
+		return out, nil
+	}
 	at, home := make([]int64, len(ord)), make([]int64, len(ord))
 	out := make([]ID, len(ord))
 	for i, g := range ord {
 		n := v.base.SegmentNumber(g)
 		at[i], home[i] = int64(g), int64(n)
-		out[i] = v.base.Segment(n).ID
+		out[i] = v.base.SegmentID(n)
 	}
 	rows, err := v.pool.Query(ctx, `
 		select a.i, s.segment_id

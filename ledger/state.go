@@ -103,6 +103,14 @@ func (s *state) segmentOf(group int64) Segment {
 	return Segment{ID: b.ID, Totals: b.Totals, group: group}
 }
 
+// idOf is the current segment's id of a group.
+func (s *state) idOf(group int64) ID {
+	if seg, ok := s.current[group]; ok {
+		return seg.ID
+	}
+	return s.base.SegmentID(int(group))
+}
+
 // lookup finds a current segment by id.
 func (s *state) lookup(id ID) (Segment, bool) {
 	if g, ok := s.byID[id]; ok {

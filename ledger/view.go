@@ -68,7 +68,7 @@ func (s *state) overlay(w *base.View) {
 		})
 	}
 	for i := range w.Outside {
-		w.Outside[i].OtherSegment = s.segmentOf(s.groupOf(w.Outside[i].Other)).ID
+		w.Outside[i].OtherSegment = s.idOf(s.groupOf(w.Outside[i].Other))
 	}
 }
 
@@ -152,5 +152,5 @@ func (v *Volume) Nearest(ctx context.Context, segment ID, p base.Point) (Near, e
 	}
 	v.mu.RLock()
 	defer v.mu.RUnlock()
-	return Near{Supervoxel: ids[0], Segment: v.state.segmentOf(v.state.groupOf(g)).ID, Distance: d}, nil
+	return Near{Supervoxel: ids[0], Segment: v.state.idOf(v.state.groupOf(g)), Distance: d}, nil
 }

@@ -181,6 +181,9 @@ func (b *Base) Segment(n int) Segment {
 	return Segment{ID: ID(s.id), Lo: s.lo, Hi: s.lo + s.size, Totals: s.totals(), Assumed: int(s.assumed)}
 }
 
+// SegmentID is the id of a base segment, for those who need no more of it.
+func (b *Base) SegmentID(n int) ID { return ID(b.segments[n].id) }
+
 // SegmentNumber is the number of the base segment that holds an ordinal. O(log segments).
 func (b *Base) SegmentNumber(g uint32) int {
 	return sort.Search(len(b.starts), func(n int) bool { return b.starts[n] > g }) - 1
