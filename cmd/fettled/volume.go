@@ -129,7 +129,7 @@ func (o *operator) triage(ctx context.Context, d *Daemon, volume string) error {
 		return err
 	}
 	p := newProgress(o.err)
-	err = triage.Full(ctx, v, func(done, total int64) { p.step("triage", done, total, "segments") })
+	err = triage.Full(ctx, v, func(done, total int64) { p.step("triage", done, total, "supervoxels") })
 	p.end()
 	if err != nil {
 		return err
