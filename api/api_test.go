@@ -219,10 +219,26 @@ func (h *house) correcting() {
 	if then.Segment != a.Segment || now.Segment != back.After[0] || len(list.Items) != 1 || list.Items[0] != now {
 		h.Errorf("N1 was in %s, is in %s", then.Segment, now.Segment)
 	}
-	if hist := read[api.Entries](h, h.must(200, "nobody", "GET", "/neurons/N1/history", nil)); len(hist.Items) != 3 {
-		h.Errorf("N1's history has %d entries", len(hist.Items))
-	}
+	h.pagesOfAHistory()
 	h.follow()
+}
+
+// pagesOfAHistory reads the neuron's history whole, and in two pages.
+func (h *house) pagesOfAHistory() {
+	h.Helper()
+	whole := read[api.Entries](h, h.must(200, "nobody", "GET", "/neurons/N1/history", nil))
+	first := read[api.Entries](h, h.must(200, "nobody", "GET", "/neurons/N1/history?limit=2", nil))
+	if len(whole.Items) != 3 || whole.Next != nil || len(first.Items) != 2 || first.Next == nil {
+		h.Fatalf("N1's history: %d entries, %d on the first page", len(whole.Items), len(first.Items))
+	}
+	rest := read[api.Entries](h, h.must(200, "nobody", "GET", "/neurons/N1/history?limit=2&cursor="+*first.Next, nil))
+	if len(rest.Items) != 1 || rest.Items[0].Position != whole.Items[2].Position || rest.Next != nil {
+		h.Errorf("the second page: %+v", rest)
+	}
+	h.refused(400, "cursor-malformed", "nobody", "GET", "/neurons/N1/history?cursor=99", nil)
+	if all := read[api.Neurons](h, h.must(200, "nobody", "GET", "/neurons?limit=1", nil)); len(all.Items) != 1 || all.Next != nil {
+		h.Errorf("one neuron on one page: %+v", all)
+	}
 }
 
 func (h *house) working() {

@@ -503,6 +503,7 @@ type Neuron struct {
 // Neurons defines model for Neurons.
 type Neurons struct {
 	Items []Neuron `json:"items"`
+	Next  *string  `json:"next,omitempty"`
 }
 
 // NewNeuron defines model for NewNeuron.
@@ -1037,13 +1038,21 @@ type GetNearestParams struct {
 // ListNeuronsParams defines parameters for ListNeurons.
 type ListNeuronsParams struct {
 	// At a position, or an RFC 3339 time
-	At *AsOf `form:"at,omitempty" json:"at,omitempty"`
+	At     *AsOf       `form:"at,omitempty" json:"at,omitempty"`
+	Cursor *PageCursor `form:"cursor,omitempty" json:"cursor,omitempty"`
+	Limit  *PageLimit  `form:"limit,omitempty" json:"limit,omitempty"`
 }
 
 // GetNeuronParams defines parameters for GetNeuron.
 type GetNeuronParams struct {
 	// At a position, or an RFC 3339 time
 	At *AsOf `form:"at,omitempty" json:"at,omitempty"`
+}
+
+// GetNeuronHistoryParams defines parameters for GetNeuronHistory.
+type GetNeuronHistoryParams struct {
+	Cursor *PageCursor `form:"cursor,omitempty" json:"cursor,omitempty"`
+	Limit  *PageLimit  `form:"limit,omitempty" json:"limit,omitempty"`
 }
 
 // ProveConsistencyParams defines parameters for ProveConsistency.
@@ -1079,6 +1088,12 @@ type PostReversalParams struct {
 // ListReviewsParams defines parameters for ListReviews.
 type ListReviewsParams struct {
 	Limit *PageLimit `form:"limit,omitempty" json:"limit,omitempty"`
+}
+
+// GetSegmentHistoryParams defines parameters for GetSegmentHistory.
+type GetSegmentHistoryParams struct {
+	Cursor *PageCursor `form:"cursor,omitempty" json:"cursor,omitempty"`
+	Limit  *PageLimit  `form:"limit,omitempty" json:"limit,omitempty"`
 }
 
 // ListMembersParams defines parameters for ListMembers.
@@ -1438,7 +1453,7 @@ type ServerInterface interface {
 	GetNeuron(ctx echo.Context, volume VolumeName, name NeuronName, params GetNeuronParams) error
 	// GetNeuronHistory The entries that changed the segment of a neuron's anchor, oldest first
 	// (GET /v1/volumes/{volume}/neurons/{name}/history)
-	GetNeuronHistory(ctx echo.Context, volume VolumeName, name NeuronName) error
+	GetNeuronHistory(ctx echo.Context, volume VolumeName, name NeuronName, params GetNeuronHistoryParams) error
 	// ProveConsistency Proof that the tree of a size goes on from an older one
 	// (GET /v1/volumes/{volume}/proofs/consistency)
 	ProveConsistency(ctx echo.Context, volume VolumeName, params ProveConsistencyParams) error
@@ -1465,7 +1480,7 @@ type ServerInterface interface {
 	GetSegment(ctx echo.Context, volume VolumeName, segment SegmentID) error
 	// GetSegmentHistory The entries that a segment's content came through, oldest first
 	// (GET /v1/volumes/{volume}/segments/{segment}/history)
-	GetSegmentHistory(ctx echo.Context, volume VolumeName, segment SegmentID) error
+	GetSegmentHistory(ctx echo.Context, volume VolumeName, segment SegmentID, params GetSegmentHistoryParams) error
 	// ListMembers The supervoxels of a current segment
 	// (GET /v1/volumes/{volume}/segments/{segment}/members)
 	ListMembers(ctx echo.Context, volume VolumeName, segment SegmentID, params ListMembersParams) error
@@ -2146,6 +2161,20 @@ func (w *ServerInterfaceWrapper) ListNeurons(ctx echo.Context) error {
 		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter at: %s", err))
 	}
 
+	// ------------- Optional query parameter "cursor" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "cursor", ctx.QueryParams(), &params.Cursor, runtime.BindQueryParameterOptions{Type: "string", Format: ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter cursor: %s", err))
+	}
+
+	// ------------- Optional query parameter "limit" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "limit", ctx.QueryParams(), &params.Limit, runtime.BindQueryParameterOptions{Type: "integer", Format: ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter limit: %s", err))
+	}
+
 	// Invoke the callback with all the unmarshaled arguments
 	err = w.Handler.ListNeurons(ctx, volume, params)
 	return err
@@ -2219,8 +2248,24 @@ func (w *ServerInterfaceWrapper) GetNeuronHistory(ctx echo.Context) error {
 		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter name: %s", err))
 	}
 
+	// Parameter object where we will unmarshal all parameters from the context
+	var params GetNeuronHistoryParams
+	// ------------- Optional query parameter "cursor" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "cursor", ctx.QueryParams(), &params.Cursor, runtime.BindQueryParameterOptions{Type: "string", Format: ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter cursor: %s", err))
+	}
+
+	// ------------- Optional query parameter "limit" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "limit", ctx.QueryParams(), &params.Limit, runtime.BindQueryParameterOptions{Type: "integer", Format: ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter limit: %s", err))
+	}
+
 	// Invoke the callback with all the unmarshaled arguments
-	err = w.Handler.GetNeuronHistory(ctx, volume, name)
+	err = w.Handler.GetNeuronHistory(ctx, volume, name, params)
 	return err
 }
 
@@ -2451,8 +2496,24 @@ func (w *ServerInterfaceWrapper) GetSegmentHistory(ctx echo.Context) error {
 		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter segment: %s", err))
 	}
 
+	// Parameter object where we will unmarshal all parameters from the context
+	var params GetSegmentHistoryParams
+	// ------------- Optional query parameter "cursor" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "cursor", ctx.QueryParams(), &params.Cursor, runtime.BindQueryParameterOptions{Type: "string", Format: ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter cursor: %s", err))
+	}
+
+	// ------------- Optional query parameter "limit" -------------
+
+	err = runtime.BindQueryParameterWithOptions("form", true, false, "limit", ctx.QueryParams(), &params.Limit, runtime.BindQueryParameterOptions{Type: "integer", Format: ""})
+	if err != nil {
+		return echo.NewHTTPError(http.StatusBadRequest, fmt.Sprintf("Invalid format for parameter limit: %s", err))
+	}
+
 	// Invoke the callback with all the unmarshaled arguments
-	err = w.Handler.GetSegmentHistory(ctx, volume, segment)
+	err = w.Handler.GetSegmentHistory(ctx, volume, segment, params)
 	return err
 }
 
@@ -4113,6 +4174,7 @@ func (response GetNeurondefaultApplicationProblemPlusJSONResponse) VisitGetNeuro
 type GetNeuronHistoryRequestObject struct {
 	Volume VolumeName `json:"volume"`
 	Name   NeuronName `json:"name"`
+	Params GetNeuronHistoryParams
 }
 
 type GetNeuronHistoryResponseObject interface {
@@ -4472,6 +4534,7 @@ func (response GetSegmentdefaultApplicationProblemPlusJSONResponse) VisitGetSegm
 type GetSegmentHistoryRequestObject struct {
 	Volume  VolumeName `json:"volume"`
 	Segment SegmentID  `json:"segment"`
+	Params  GetSegmentHistoryParams
 }
 
 type GetSegmentHistoryResponseObject interface {
@@ -6051,11 +6114,12 @@ func (sh *strictHandler) GetNeuron(ctx echo.Context, volume VolumeName, name Neu
 }
 
 // GetNeuronHistory operation middleware
-func (sh *strictHandler) GetNeuronHistory(ctx echo.Context, volume VolumeName, name NeuronName) error {
+func (sh *strictHandler) GetNeuronHistory(ctx echo.Context, volume VolumeName, name NeuronName, params GetNeuronHistoryParams) error {
 	var request GetNeuronHistoryRequestObject
 
 	request.Volume = volume
 	request.Name = name
+	request.Params = params
 
 	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
 		return sh.ssi.GetNeuronHistory(ctx.Request().Context(), request.(GetNeuronHistoryRequestObject))
@@ -6306,11 +6370,12 @@ func (sh *strictHandler) GetSegment(ctx echo.Context, volume VolumeName, segment
 }
 
 // GetSegmentHistory operation middleware
-func (sh *strictHandler) GetSegmentHistory(ctx echo.Context, volume VolumeName, segment SegmentID) error {
+func (sh *strictHandler) GetSegmentHistory(ctx echo.Context, volume VolumeName, segment SegmentID, params GetSegmentHistoryParams) error {
 	var request GetSegmentHistoryRequestObject
 
 	request.Volume = volume
 	request.Segment = segment
+	request.Params = params
 
 	handler := func(ctx echo.Context, request interface{}) (interface{}, error) {
 		return sh.ssi.GetSegmentHistory(ctx.Request().Context(), request.(GetSegmentHistoryRequestObject))
@@ -6614,135 +6679,135 @@ func (sh *strictHandler) GetThroughput(ctx echo.Context, volume VolumeName, para
 // const string: with thousands of chunks the chained `+` fold is several
 // times slower for the Go compiler than parsing a slice literal.
 var swaggerSpec = []string{
-	"3H3tdxO30vi/ouPf/R3acxeSAKUl+UShveUWCg+k7YfCDfLu2FazlhZJa+Pmyf/+HI2kffFK9jpeB24/",
-	"JbZ39TIzGs37XI1SMS8EB67V6PRqVFBJ56BB4ieqXk3M3wxUKlmhmeCj0xElhVDMfEiIkIRy8ubHp+TB",
-	"gwePiWZzGCUjZh77WIJcjZIRp3Mwb+lRMlLpDObUDKlXhflWacn4dHR9nYzSnLL582fmR3y/oHpWv46/",
-	"jpKRhI8lk5CNTrUsoTniRMg51aPTUVmybJQEZmAZzAuhgaern2HV3dgT8uuvz58lZE4zIIKnQCZCkuWM",
-	"asIU0YKMgWSCA6E8I5dQaKJnUpTTGYEFyBWRUADVZ4RpMoZUzEERPQPCMiIm+B9wLVcGZuYD7ighShBt",
-	"ZqDvuH3fzEW5WoKEDGfiQrtpp5Txe+QlXRGlzS+Mk4+l0KASQu1cz384/5Fkkk40mVFFmL73jnuEzIBm",
-	"IGuQPq/BcdfAYxNw5/TTC+BTPRudPvguGc0Zrz4+CoGaQykF/wUnCuIT/2ycsZ7iJDRDQafwtJRKyGqG",
-	"NYpL7a+bqc4M84LNmY6NkuOPzUEymNAy16PTk+PjxECGzcs5fjpGyLiP1aIZ1zAFaacDqQT/ifIsj0Fm",
-	"Zn/cBzYKpnPgOnqY3O8b5/iHhMnodPT/jmoGcWR/VUfPn+E0mqrLX8r5GGQMyfbHXqeWcf3o4WgrALUE",
-	"eMv+gu7pNYeLgTKHwpwE8+AZoXmekOUMOKFjZbccQrIyI+6zrIXIyzlsoHf7wB5YvTavqkJwBcibX0sx",
-	"zmFu/k0F12ZvhmMXRc5SakByVNgn/vmnMvC56olbPy7O2IYwcsIlcE2WUvBpgtwJv9SCZIJw+KQt/dmx",
-	"zFRPlGJT/gY+lqBwhYUUBUjN7C7G7ttNK/rePOPIDV9iGuYqiKV1zODxfG4ft+fTPUGlpCscVIT5Qo2m",
-	"P8wz76s3xfhPSHE9dmvmkfVdpaK06Oiup9rEOmhZOiOCG1aO5GpI2ACHmHuAUHUJmbmNDP3usPv2bte2",
-	"ZVcZ2tn3QVxVu9qB5SWjCZ2zfBUAcjK6ZDzbhvxzqi5/Ns/1X/3TGaSXhWA8sAdztV9Q3QJfRjXcdZJL",
-	"Z41c6ACvMdixyCdpNRv56un9t6+JzsX0bv3t16f2iFBOaJkxLSS5BChUaDIh2ZTxIKykELq7DiN4PXr8",
-	"6D5yO2Iu+ITM4FNobLWZaWqSioUR+5LtdLWGCbfqxHNRXKqDXFJBfDOmnDzWRtZlSEhDGC9AsgkDA8rV",
-	"KTEs9p8zqmb/HFMFzSVHDrQZOLgeFDI769iFXoBnliMAN0fiD8O0Rb6ADFl/DlThv/CpwMUkIwN1TS+B",
-	"N1a0NtxOBMuyHsKwF0SCpGZYVE/+UnLN8r5rW0OCXZeZq1pNYrUEO2oUQdHLBFmN+7/ikt3trd0Ahgu1",
-	"X+nHjwJ3SQxw22Sa9W0+Aw2ptpJtYItDcFMvmAQGUnSltl+KToB3C3LTu5ffb9iT6m6qAnwvDFTA2Xa/",
-	"2dFCa/khm4IKXXBc01T3X8prymSIEHLGL/cdpXPdubX50YP7stx8XwibYVahfaGAt5UyNsAdB+7y14m2",
-	"KgTN81eT0ekf27QPNbp+vy6cOp1GWW2aadTizaR06mTj7hVeSDGVdG5fKYTSkBFhZS/Lke4oMoYZzSch",
-	"FroLVx7DREgYfI8SNEL9OmkqAd2NGjnhu2+/+4Zo+KTt20uqiLkzITsjS6ZnhBLF+DSvrBQcj3VnJ6lQ",
-	"gUnExLxf5EwnxMg/IstaokQmynHegIzTDM145VYFwB7X/nfbn4I5sbzXqH0YJ1Ku55w50MmFgd0Ggcw8",
-	"g/AlYkIcbqKy2YbL2Jvael7IEmhsJAlGvoO+qoMC2OFaRHrtcSPGUObU4628pVKjK7gkVpBw109bkHDQ",
-	"qI5f4lhNRSKW/JoYjbKtnx2VeLluDnKKNgND9CMPXpoHxbgfFiwDnkKX90Vv4ZIzHfxhQfMS2pwncrjC",
-	"N7Z9P7TPHxnPzCSdRWYNeaQrojb21u968S8ECGaDfDOlVjVaU2A+FZAavq1WnBYKFClKTSSbznQ//mN5",
-	"SleaCukeBoLWzlrkNAWynLEciOPKhGWKpGJuzcNTESLzXWU01I0u+HyrCIHarnlBijEds5zpVS8SwTcK",
-	"Yeh2u13IPocSYgRq/oLqxS7WyLMisq5QeYnW6WrwBlwa5OeW1YaBI5sN1L63tORPzQHkpZ9EnoHcTyHd",
-	"meQ+u2JY8XCnHDoi2KIaWmP3uqdqORM5EEvtZCLFnBwTLcj9/zx6ePcE9XA6L3Iz0sl3Dx8++vbhw+Nv",
-	"H3x7/Pibb04enXxjiIlqDdIM9p+vjv/3j5O7j9//cXz38fur4+Tk8fXX/wiB3FB3/4szRDjPlSohOxeX",
-	"wLvYV5BKCN8N2r+xEdv4UNfIab5N/OghEBsSOWfzwC2WAldCWpmrjQL0cjmBFY0ZKGyKEg1iotSGYQYp",
-	"aFe6nUPGKL+YM15qCFhYf6ZFTvndl8BAnjlvgGPgRsAnM7oAdLXVq2wvsQcvrWw9AdPvugnKEnXDOlTB",
-	"MAT6F0JclsW+rMqO8lzDfA/luTFIgDStY6kX0auyALkQnyDv6W9qrq/xcnUzbFhu1GZEwwepHn7Xo9x2",
-	"OHRdDtF9hKH9Egxxbbqkeojl+95DL42s+1rCgsEyAMJ+gKGTCeNOLulqqHORQY7qds5gkhBmPeZ6KYgW",
-	"ZTrrdwDH/ZaSMaUpT8FJVj0Gbgo2vSD/1pFkSCkSmubbDY32qQ691EKQG6e9nWREjb4TR2P8JGzfkrU0",
-	"jPs+6GXzfc0e6G3xpo+VKImiy1NC89xeK3rGFElnlDt9vtaBG1EL95tHMXIALOQa6w4B8RegMgi/GxPV",
-	"5+KWbcIJ77WUIiCB0GxXr4R9YxzW7ChPZ1a53A6GuNW6PzDDerFbRWOtSb3RzXeMhdPemoQD982v5l9g",
-	"GUVZLxj7k+uh3DhAJ87VuzHwJA7WyHJfV9pGe7mzKkIm4AnNd7gB34gctkK0DrnBsSNrjYjj3kPcZjYh",
-	"6HQGfVUA93alNXQ1Ygt28ql7K0kP9rOzhF2L1r1kYZoF7nrk19ZVTcTEBc7ljIeVgCpaop80XdkN7Ht+",
-	"EUkNznoXGywDr5zM37D2pUJKeyckIyVKnK3kaQ5UBg1+6NO5qeB4H1dZf1gXIF6DKHLYl9u4o3dzbhM7",
-	"uwPfDhtYQQ6Tplw7FiIHym+HScTuCVxTHFxPUU7pAs1vxRGcliXUgwy/scjqntGQey5NodAxXuR/vVAz",
-	"aj1cGy8YfAhf02wBFzNRyr4cpT6DwYVkdNWhuGCEhgu9CA6yWzBAZRAJSPkb7GhVHEhwCZuMCOZXXUoe",
-	"/9WoaLFfLeOKh6VdFCAvGojpiRfPB7ez6cqyZ3DVNn5s4K+RwJkWBXnMNUBQk+aoAbbgyfSxYu2r6lNC",
-	"Vgn5izBOULHqBt7FYVIz8wdNZv4gwMzrOE6aZejTovnrxgG0YaLrkQpZIJhLaTrOIcGodefaDoaZZaCp",
-	"tc52fpowyLOIs5xK7QPZpVUinR9a2XjQYDQStxpGcDIOn/SF0lCE4iHrqFKxDMazaapLFaFmpiM3hv2i",
-	"6ZCUbKtBGn/1o1YzJxYLQYKSQky6jBQjgjtbRSe8ssZpA9sc6AIUKYsllVU4X/9wpnCg4JagwF1D/tqR",
-	"frivCBwq39KNbEY97TlTKcpib2f15UYP7/utQYXm9RAU/qek3h8XCKiF7MIwtwDOGqZBlyLCiViAzGlB",
-	"5qXS1mRt01LcUKNwBG6u4AJ3o2L6hHkC9xl5At++GLvf2+tcUMkw4txwB8YtLZmP4xUZA+NTooUg07zE",
-	"9fVgnlzoC5UKCdlFbYLt4XTaNVaC8uwCpLRq8ZqaklFzc5A3lGcEn0lIQZlU1jEgAR3AzozSRxsycxUS",
-	"UqbWF7jlJQkpzfO+FqUbQA3Rvhdq01KTsugDiHV5oA7iaKyiRW0d0LXB0sLiGqmv0XWydt7WoRWiu/Bx",
-	"hjIgwM/QV9ufCTnfbih6kE7jgdrW4mmktdpjNRF5LpaQkRXoPvHbLVU+Ek5hZAia50QUwIlXp/udXRa5",
-	"7s1QvcFTmUYCADIXcKVqBiSmq3gmhEfj+n1mR3RrbBoJPFotWqr9hQjjjZVSowb2DXbpXexqbpjwCpTI",
-	"S88Cbx4z4E1aXRTWlpGNyHOP9Q9t60QT1umSSPGVfkCYvkmKQuXFbQeI4UajkFzEcWllgy1gaPlbGmDd",
-	"5pa4CZytkLJN+zYPVQuKwCgMDhvcFoVH09XTQ/TaeFNvzie6sXencdlsdPC8ibk5hzhAG60CLoCwcxz8",
-	"ykn3XJQ8Y5lNJ7YnxG6wxxWwAJmxdCvJ/OYe6wRiuu93OFEGrFEC6n82Blp4cI0ib1l9C6PHSZ827SwL",
-	"0saLooFh2vYI1YtER0ogHqmW6RMjQzGtMD1c+vxtbr2LRHCU7CmxeWzr+v/OcYE7ew87sHlb+9fWUzhT",
-	"5y3ax8drIJGWUgLXxPwCPKNcqzMDIsgnLlKHobXBPYcKopB8w4HBM4Lp/Ewn5BilGgPmDHK2sBnAPY6K",
-	"ny9oaWZZPx3Vh+pvWaz1Y2e4U64FEXrWMytvz8ACZqOh7U4dYBsxBg7LoVPz1ht+1wRiNg1YOx5/Q/4/",
-	"+Z3lSnCzQZALmveTLHOx7KkF3ThC2r5op0rsBoIbZlkoBo6O8x2c/xMmLR/se2oih0bNaZ4bllEfccKy",
-	"yirSxcCJYTf3T8lyJhQQDPM31GYEXXVGjk/NhwnNc0XEZEJKbp6IWBb2Iji7vAaJVQD0wAnC3ogw8VCk",
-	"+ZhNS1GqHtaUVJR5RqaCADNnjCzpKnz6gwkvPsnljMDHkuaWe7vEaDKxBDRw9ktt5QqFxxg0UkWa8WTJ",
-	"XuawngEVjUAnxbIdfFN4igLzLqnkPi67r9kzHCQ18kvyaR6IyqRBJY3ZKvhGqW4o4TdgrewZUgbhtNN1",
-	"C/BNJWS3sC3y8bmLAg8HLFwECyq46j7bdmjzrzGnxAfbrbkFWolqmqpLn6fWO3n3h0UkLG9DUMWkkSqw",
-	"b07ADgEaPdPdXKrK3pH/O9dG2G5FQp85mglZ3xhqXhWUCXiECox8IM4h08skvHMCDRMyGKVqEEcKkMRu",
-	"u99ubicfR7bsPhsDAuonK3fx9nfwqcHyfpwBrw9pvsUHN+UHGg4eNF1XAaNWzskZ1u1CcdoyDqPDGYGH",
-	"pJSjC8Uwn6CgE5KUq9JGVUaiTVLq5MNrG4YQTl5yGUsVfwkmLzXNkRV51sfVQyDGq58JHpBWwadi90sE",
-	"dzx/G766rlPzZWxllhXfuqHFcJLt0fAWsrNI5ZKKbzasBehtuOu9hvZTzHdoR3jrz4Efwpmfa1JshEiE",
-	"ohm2lQ859/Fz+wSKWcQOn912bovnFaUeJpTtWVgcinokggvdaOGPRIBuiFDreYUzzPfarc6LfSUSNJdT",
-	"pS9KF2O051GSsBCX/UcKccsqds4VBaoX39x7FOT7k7BNebtxqON5peiul5P6tItwMWd8l8d5mebA+rpx",
-	"2xlLfd5wGdMXjO/6hih1z1d2WNGGzKhqnPaq11ZUQayCdOIxFELqb7Uh2fNfy2MrDhvkqb9VokhHAyrn",
-	"kF1UxV96QGdMFVw0hac+1shGlZoej2dsCiEDxtufnty9/80j71NwFlHItharmFF1oWVpQ5m69tADH4lY",
-	"+sdOZ2Wr59GwT+tm6admSPgTFZ6LHZFz80PbtwCgjeuM7rcsiBbEVh9sRBX4iIIzcveE2OIZCBdrl+tn",
-	"jJaMTqHn1F4A7jE7sQP3dHIZ0Panr3AGS8NxuL6pDoCTNbbVPuBJs4xTl2aSNR7SwHaDtdXnr7G/Lser",
-	"Tn6Q9SEP+14ymOxQkmSn+KotsIyvau/Lvrm5m1/5vzM9yySNeywPUI40oDyFFocKd1oaPfCt2bNbjxdO",
-	"EQ7IlYFK1FHd+zOtC1vXlfGJ6J7Ic4w+zaYgE3fKsJQJassfSyiBYJmnyiuKhh2g83vv+Dv+PFOESnOR",
-	"pGxOc6w0dWqO7YqUCjCW6NFDMmZa2bqxlPz77atffGmGTIAiXOh7BI+iHaoVgH2PfKD6A0EeRceitHlE",
-	"BVX6lNQVyd/xr9pFH74O1ihPHN+ZA+Wq5viVK87VAqPavOw4ENP3yAumtCvywjgp6BTUGflgFKEPWCJ8",
-	"Bu+4LTvt71XLywykfOFwV3rAJUIBz+6RHynLSwl2165sL7FR2op8ZVb++OE3335d1enCOG/yIRUZfLDQ",
-	"/FDFUn8giq7UO15HUN8jP7KpHR7h5oxoOBcqTjQnGdX0lOQipTmRZQ4K8ZiBgSWZ0xVR4MueQ2EWPreF",
-	"xV2k9WgC2gZHL0Aq52fyMV+0YKPT0YN7x/ceuGBhpNejxclR1iwKOLVFLcwZwyDD59nodGQgXpcOXKuB",
-	"fP/4eEP9493qHteTBCof1+vEn1z97/CA1QobpZTNtTCfU7lyp8yCGN1QuRCX6JfGGEaM16dThcffXnTv",
-	"zesGWJYrB6H0L9Av4ZDQ8cliXdDUxfIGgM3vM2HT/g0vI2PIhREKtGhAxVJvDZWiSoaL0o/LlzsoeHCG",
-	"AHjc8vYHzQ8LkKuxyFYYOFIp1B2w4B0bAMSTLHvtI3Vc+sb3wmZoDgKCOpn3un2PaVnCdQf2J7dAmpiV",
-	"NwDon2TmurJEjrcJmdN0hgbl1Jah3kaeR1cWYdfrPTYiXv/6kaNWx4Dr98hA01kXvzax8KAobmUw9sLy",
-	"bTAgGzm1wvuMi+UA+LY7rFB+RxHMukRJggsNvuwErKy+grmbvUngSFcmrSjHclavA8LTzRBi6O6X/Y9N",
-	"DT87ZlLVftIzYJLYUlMqwsX2PCVBJoh1tc5dpasDcUFfXutWmWCzYFgAp9bGOgBOcR5CLUIxOM9h0Yi/",
-	"aiaW3JZjEbYi325H4ugK/15bzSQHa49uY/ANGqNrFB7yeIQg6Y3h+4PS7sTDcvhDkAT7kOgG8d+sj9J7",
-	"h8NFra1H+ZjX6A+IKT9FAFd+hcPI7G40Vz0ZjEY4L4R0WXcOd37KitLdF0dX9p/rTSL8b3WPmIMCKybG",
-	"O1f2EGK8KzBdWZV9rxhwpjxrZsAvDQ9xFj+pbGOrIEB3PQ2NljzrNFth48iGLc1D7c92nCEqd+MM51VB",
-	"kuHvnHaLnVuWy6omOAGamoklmVO+GoCi/sUW4AzUNiweWR2qQs6C5CK7sWcOmqlcAEalTVtj2nUPSjha",
-	"OtvfgUjCmxYPSRTr5su/J1m8AE0oR7XYZUNbEqlY9JQtgDdJZgeKSFt9hGJMu9Ft6IDwbMwSYd6N1Q5z",
-	"33FYYlh5p82R95EhC2/KLVj1YE9GHTszL+kl/C1B/ZZNOVrH2xm+eFN6lbYL4+00e+TCQrfTre/9eHB4",
-	"mokiIDWLHYZsi3Kcs9QM6BNq/PTWvI6fXYHfoYk3ihUsgrxRUn5qHzmkSoPsLgR/+8MwUt9KlJhKEuCz",
-	"B+ELCLdz10Vqp+HXusGaKQ5xEbdaVt2yVcCFZHYwvhKlVARrqaP4jXnrRJZcEVEOcn/QS6jFMUMAiRfQ",
-	"BAds2LaLbGbPz9EV/r0+gk8aXNHEGxNUsvVp3484Tns/4DqeVp2JD8VAbVZE5C7yKRN7Yux7mLrGqZYY",
-	"qAs9viGKXMWuz48jV5ThaaN99NAnfK3uwy1L2rEzjm40F7k7hPJFbRzAmKaX1o7rCoHRHYXqdTrB+OYv",
-	"gU5wIYelk1ZNic9AJ5gKEDRquijzAdyUGNqBpLLWQuGM0EaRAsKUj7LA55h23hVCNbGVffqSFNRd76Li",
-	"le+Md0AA+ylCLioMFRkEulZHiKlg7ov9ZK0k3Ai90p83tFMPv+lTYXqDceU7/l5FmNodRdA2HZrNdY3p",
-	"b9BOYhn5GDCzAO/RgMiEvqdYn+7hx6FAufj8Y8jFctv8VXOzG7cvD6NNyGxtXxX1jkSeAUaCVpkr/gtr",
-	"NgiWy9vuwKh7+vd82rbuj2tejjccXXmYbjTA/+Aifg/KI6I6MPhsqz2ZxCvuxmrc0+OVbrkubOfHQ3GO",
-	"tsupERzbw+vUi2Lj+P5UCNm0160z4hlWczkjQNOZhdIdRVLKBWcpzR2cPNiYrPs4JoRxgkfijLSNQCqp",
-	"IwjFxEUW2m7arr65LdiDzg5ly5H4QiRuvUlHszBfv/DsfUd6zNsEuX4Og8Tn8D+MDcYGYHofj7KRni+Y",
-	"626P4LE5l66Pd9YIDGCKKJCL4S2LMZJpJndH5Ycf6wzNgzGHao5DShC/+5hDRVSpCpYyUSrCxTIhc6E0",
-	"wSxnH+bfiUQ8gFjRaPu3s2BRJdseViSpk+RjwzUKTvQL13j2me7DHLthHcrX+UKIy1+LA6lP7UZet6w9",
-	"uf5rodAaazXBm4FQNUxsyHmz45GYoLusWdolMScWQxF1I/gdTWwuJ9Od3Cr1JK4+1YWBD0ARr4XSL11G",
-	"9Bdpnm3XaLxd82xUGrSK8QB09G9hyHMpamIarwglOeOXIdlvM4kcFY2ySwcgFTu6p5YvA9nHw87tC1cF",
-	"cG50OAXAh7rjKUGskSWWuZrTSzgjXOgZ49Pa9rILEfC68VlMf/K90Q4IRj9FRIz1ixyIBdcl1XxhxlZR",
-	"xgCXPYCE9Kmf4hSvcRcednWYYf/af9j1SmvikjDuVQPba5vmcXvIjYSx93Gyr3q7RbUD3/9tV+RT9Wri",
-	"braDHRe7ssBx8Rsb5qikkFdtCmSdwosBWnQONv7Ph33XLSzdAfJrOZCT+EmWub54B4v69r37bleCaM56",
-	"mNyXHxGRhCKCa2wWjHPILDdsNZfsYnTLwTq6MiNeb75WKtwd9JjELxXfl3HvjAg7VBX36o5Cb3F+mHOy",
-	"XZW08/R92rGxfog+mjGlhVxtR/hP7sHP47PxXqVh2GMruMvX+G30tbUhqxZSdxSxTTMTYq3qHXvM5yCD",
-	"KHrROKeOUsEVU6ivRVH7WooFPG08eMiEMbQZxhJW7Y97oxYnqSL2iJbgcuQV+wvIVIAigtvWTpQjNqVz",
-	"5Axp2uyITDi78xHaSc3KIuKS7UNyM9t8xJ21Ze1mMW/ZXz2IivE0L33HnDhJPa8e+xsRFOXOb8AUcUam",
-	"Nn2dWeeEi3+3Op29OO6Sk+FJLOgTHt61MxT5LID7xnOxa+Z1/dSedLOpc9968Y6Abf/1m1e/3UUnSSbS",
-	"0pdTHiCXHn1N1uPSNCfiNwmhqjHzV78/eIofv74tx8vHui9aDEO+ddoBj7WfIoAY7AU1hATwk1iSJWC/",
-	"+oZddw6g12pv+bo+w2Y/7S3BffQtr+J4ghIOiyUzQYT52uUNcWJ8etpSyEubiqZ85pqwFfIJlgQdOLg5",
-	"BnffEuaQ1nnf2udLNdCvtx7629nof+WZwKhoX2+ut0XWGpM3m6beuGf+mxML6qLVPoSFMm071BELAzJe",
-	"kZUoBz6Xw7hcPb8/unL/bbR1vK2MlwfDV9WxIcxNVd3QYRg/hFdxLf8UkswgrxKCqSa2tQx2mDyMUX3L",
-	"024iDA/uj8Q+dgwH6b+tIaPC7R3ly4YSxKW2pZ2jBowvHbdzMDrVZs760j1zUJ+hneKQAUFtP5ey6qXv",
-	"xFW7Uj4n5j5HoEzdDPlAche2lPlSha61RpF/M4nrNZUaoyJswxtD8msnwIhj/toar2xvJ2u0wGbHY9BL",
-	"ALTJzHcR2CxR3U4chaevL4M8joed+1bjKBBrw8VRNEjt6Kr+sFkqbLrYDhzk9lxDMNuw4a8aNsLNWTQb",
-	"nTF3D24bPmpdtUEeM24OEOW5xfhS1RmOV4ur6ojctoY3nBRiZnAhyEsh9YxkwpywTiTyMGpdMGzEd+rp",
-	"DRLXneiWYoxvHuzc7M225fX1nlvCt0Uyx8+nCVo9bdgcsf+aCGqkwKMr63XZyLRdVYL/5szfJ41MTqzT",
-	"5ev0+wCGWaXa3q7hxczyiwsZ64mqoyGkrh1XFs82NkupCOQgVtNGt+0vKNWYKtfEeZhSrU+wYQtRYg5Y",
-	"BApyBXcUqRviJZZx6VJywvQZWgxt86y1ZOSSZ23P/La0Y91qXxVlAvVTh4R4PUuwBnWjyvsQWcg0ndW1",
-	"XdFXMl6RjK7OfG15BeCC/cSSJ7bVns2FM1i6o27nRu93G3WZp+0zkmE/4OBNLMU8nG6bWRGi1yyYLxif",
-	"ZO2u3nkK2/ZwzjLOpjOtSIFK7wzMlIp89fzJL08wlu/ryPx/2dMQSv799fxpsC5ooy8FYtB1pPjjvWGE",
-	"NqnPoraU+eh0dIQM0tHBVY00VzC9+qYu43m1Ji20vqsyGOuhXFBG9UUd8nrVzBZvf2Fz3a7fX/9fAAAA",
-	"//8=",
+	"5H1td9s20uhfwdHde9KeZWI7SdPG/pQm7TbbpMlN3PZDk3UgciShpgAGAKWovv7vz8EA4IsISJRFOdk+",
+	"n2xJJF5mBoN5n6tRKuaF4MC1Gp1ejQoq6Rw0SPxE1auJ+ZuBSiUrNBN8dDqipBCKmQ8JEZJQTt78+JQ8",
+	"ePDgMdFsDqNkxMxjH0uQq1Ey4nQO5i09SkYqncGcmiH1qjDfKi0Zn46ur5NRmlM2f/7M/IjvF1TP6tfx",
+	"11EykvCxZBKy0amWJTRHnAg5p3p0OipLlo2SwAwsg3khNPB09TOsuht7Qn799fmzhMxpBkTwFMhESLKc",
+	"UU2YIlqQMZBMcCCUZ+QSCk30TIpyOiOwALkiEgqg+owwTcaQijkoomdAWEbEBP8DruXKwMx8wB0lRAmi",
+	"zQz0Hbfvm7koV0uQkOFMXGg37ZQyfo+8pCuitPmFcfKxFBpUQqid6/kP5z+STNKJJjOqCNP33nGPkBnQ",
+	"DGQN0uc1OO4aeGwC7px+egF8qmej0wffJaM549XHRyFQcyil4L/gREF84p+NM9ZTnIRmKOgUnpZSCVnN",
+	"sEZxqf11M9WZYV6wOdOxUXL8sTlIBhNa5np0enJ8nBjIsHk5x0/HCBn3sVo04xqmIO10IJXgP1Ge5THI",
+	"zOyP+8BGwXQOXEcPk/t94xz/kDAZnY7+z1HNII7sr+ro+TOcRlN1+Us5H4OMIdn+2OvUMq4fPRxtBaCW",
+	"AG/ZX9A9veZwMVDmUJiTYB48IzTPE7KcASd0rOyWQ0hWZsR9lrUQeTmHDfRuH9gDq9fmVVUIrgB582sp",
+	"xjnMzb+p4NrszXDsoshZSg1Ijgr7xD//VAY+Vz1x68fFGdsQRk64BK7JUgo+TZA74ZdakEwQDp+0pT87",
+	"lpnqiVJsyt/AxxIUrrCQogCpmd3F2H27aUXfm2ccueFLTMNcBbG0jhk8ns/t4/Z8uieolHSFg4owX6jR",
+	"9Id55n31phj/CSmux27NPLK+q1SUFh3d9VSbWActS2dEcMPKkVwNCRvgEHMPEKouITO3kaHfHXbf3u3a",
+	"tuwqQzv7Poiralc7sLxkNKFzlq8CQE5Gl4xn25B/TtXlz+a5/qt/OoP0shCMB/ZgrvYLqlvgy6iGu05y",
+	"6ayRCx3gNQY7FvkkrWYjXz29//Y10bmY3q2//frUHhHKCS0zpoUklwCFCk0mJJsyHoSVFEJ312EEr0eP",
+	"H91HbkfMBZ+QGXwKja02M01NUrEwYl+yna7WMOFWnXguikt1kEsqiG/GlJPH2si6DAlpCOMFSDZhYEC5",
+	"OiWGxf5zRtXsn2OqoLnkyIE2AwfXg0JmZx270AvwzHIE4OZI/GGYtsgXkCHrz4Eq/Bc+FbiYZGSgrukl",
+	"8MaK1obbiWBZ1kMY9oJIkNQMi+rJX0quWd53bWtIsOsyc1WrSayWYEeNIih6mSCrcf9XXLK7vbUbwHCh",
+	"9iv9+FHgLokBbptMs77NZ6Ah1VayDWxxCG7qBZPAQIqu1PZL0QnwbkFuevfy+w17Ut1NVYDvhYEKONvu",
+	"NztaaC0/ZFNQoQuOa5rq/kt5TZkMEULO+OW+o3SuO7c2P3pwX5ab7wthM8wqtC8U8LZSxga448Bd/jrR",
+	"VoWgef5qMjr9Y5v2oUbX79eFU6fTKKtNM41avJmUTp1s3L3CCymmks7tK4VQGjIirOxlOdIdRcYwo/kk",
+	"xEJ34cpjmAgJg+9RgkaoXydNJaC7USMnfPftd98QDZ+0fXtJFTF3JmRnZMn0jFCiGJ/mlZWC47Hu7CQV",
+	"KjCJmJj3i5zphBj5R2RZS5TIRDnOG5BxmqEZr9yqANjj2v9u+1MwJ5b3GrUP40TK9ZwzBzq5MLDbIJCZ",
+	"ZxC+REyIw01UNttwGXtTW88LWQKNjSTByHfQV3VQADtci0ivPW7EGMqceryVt1RqdAWXxAoS7vppCxIO",
+	"GtXxSxyrqUjEkl8To1G29bOjEi/XzUFO0WZgiH7kwUvzoBj3w4JlwFPo8r7oLVxypoM/LGheQpvzRA5X",
+	"+Ma274f2+SPjmZmks8isIY90RdTG3vpdL/6FAMFskG+m1KpGawrMpwJSw7fVitNCgSJFqYlk05nux38s",
+	"T+lKUyHdw0DQ2lmLnKZAljOWA3FcmbBMkVTMrXl4KkJkvquMhrrRBZ9vFSFQ2zUvSDGmY5YzvepFIvhG",
+	"IQzdbrcL2edQQoxAzV9QvdjFGnlWRNYVKi/ROl0N3oBLg/zcstowcGSzgdr3lpb8qTmAvPSTyDOQ+ymk",
+	"O5PcZ1cMKx7ulENHBFtUQ2vsXvdULWciB2KpnUykmJNjogW5/59HD++eoB5O50VuRjr57uHDR98+fHj8",
+	"7YNvjx9/883Jo5NvDDFRrUGawf7z1fH//+Pk7uP3fxzfffz+6jg5eXz99T9CIDfU3f/iDBHOc6VKyM7F",
+	"JfAu9hWkEsJ3g/ZvbMQ2PtQ1cppvEz96CMSGRM7ZPHCLpcCVkFbmaqMAvVxOYEVjBgqbokSDmCi1YZhB",
+	"CtqVbueQMcov5oyXGgIW1p9pkVN+9yUwkGfOG+AYuBHwyYwuAF1t9SrbS+zBSytbT8D0u26CskTdsA5V",
+	"MAyB/oUQl2WxL6uyozzXMN9DeW4MEiBN61jqRfSqLEAuxCfIe/qbmutrvFzdDBuWG7UZ0fBBqoff9Si3",
+	"HQ5dl0N0H2FovwRDXJsuqR5i+b730Esj676WsGCwDICwH2DoZMK4k0u6GupcZJCjup0zmCSEWY+5Xgqi",
+	"RZnO+h3Acb+lZExpylNwklWPgZuCTS/Iv3UkGVKKhKb5dkOjfapDL7UQ5MZpbycZUaPvxNEYPwnbt2Qt",
+	"DeO+D3rZfF+zB3pbvOljJUqi6PKU0Dy314qeMUXSGeVOn6914EbUwv3mUYwcAAu5xrpDQPwFqAzC78ZE",
+	"9bm4ZZtwwnstpQhIIDTb1Sth3xiHNTvK05lVLreDIW617g/MsF7sVtFYa1JvdPMdY+G0tybhwH0AReIX",
+	"WEZx2Qv4/kh78DdO1onzAW+MSInDO7Lc15Ua0l7urAqdCbhI8x2uxjcih61SUB2Lg2NH1hqR073ruM2F",
+	"QtDpDPqqAO4NTmvoagQd7ORs9+aTHnxpZ9G7lrl7Cck0CwgByMitD5uIiYuoyxkPawdVGEU/MbsyKNj3",
+	"/CKSGpz1LjaYDF45ZaBhBkyFlPaySEZKlDhbydMcqAxaAtHZc1OJ8j6usv6wziZegyhy2JcNuaN3cw0h",
+	"dnYHvjY2sIIcJk1+ORYiB8pvh0nELhBcUxxcT1GA6QLNb8URnJYl1IMMv7HI6p7RkN8uTaHQMV7kf71Q",
+	"M2pdXxsvGHwIX9NsARczUcq+HKU+g8GFZHTVobhg6IaLyQgOsluUQGUpCdzlGwxsVYBIcAmbrAvmV11K",
+	"Hv/V6G6xXy3jiserXRQgLxqI6YkXzwe3s+nK5Gdw1baKbOCvkYiaFgV5zDVAUJPmqAG24Mn0QWTtq+pT",
+	"QlYJ+YswTlDj6kbkxWFSM/MHTWb+IMDM6wBPmmXo7KL568YBtPGj6yEMWSDKS2k6ziHBcHbn8w7Gn2Wg",
+	"qTXbdn6aMMiziBedSu0j3KXVLp2DWtlA0WCYEreqR3AyI+5eKA1FKFCyDjcVy2Cgm6a6VBFqZjpyY9gv",
+	"mp5KybZaqvFXP2o1c2KxECQoKcSky0gxVLizVfTOK2u1NrDNgS5AkbJYUlnF+fWPcwpHEG6JFtw1FrAd",
+	"Aoj7isChcjrdyJjU09AzlaIs9vZiX250/b7fGm1oXg9B4f+V1DvqApG2kF0Y5hbAWcNm6HJHOBELkDkt",
+	"yLxU2tqybb6KG2oUDs3NFVzgblRMnzBP4D4jT+DbF2P3e3udCyoZhqIb7sC4pSXzcbwiY2B8SrQQZJqX",
+	"uL4ezJMLfaFSISG7qG2zPbxRuwZRUJ5dgJRWLV5TUzJqbg7yhvKM4DMJKSiTynoMJKBn2NlX+mhDZq5C",
+	"QsrU+gK3vCQhpXne19R0A6gh2vdCbVpqUhZ9ALEuD9TRHY1VtKitA7o2WFpYXCP1NbpO1s7bOrRCdBc+",
+	"zlAGBPgZOnH7MyHn9A2FFdJpPILbmkKNtFa7siYiz8USMrIC3Sewu6XKR+IsjAxB85yIAjjx6nS/s8si",
+	"170Zqjd4KtNIAEDmAq5UzYDEdBVPkfBoXL/P7IhujU0jgUerRUu1vxBhvLFSatTyvsFgvYtdzQ0TXoES",
+	"eelZ4M2DCbxJq4vC2jKyEXnusf4xb50wwzqPEim+0g8I0zfJXajcu+3IMdxoFJKLOC6tbLAFDC1HTAOs",
+	"2/wVN4GzFVK2ad/moWpBERiFwWGj3qLwaPqAeoheG2/qzYlGN3b7NC6bjZ6fNzH/5xAHaKNVwEUWdo6D",
+	"XznpnouSZyyzecb2hNgN9rgCFiAzlm4lmd/cY50ITff9DifKgDVKQP3PxkALD65R5C2rb2H0OOnzqZ1l",
+	"QdpAUjQwTNuuonqR6EgJBCrVMn1iZCimFeaNS5/Yza3bkQiOkj0lNsFtXf/fOWBwZ7diBzZva8fbem5n",
+	"6rxF+zh/DSTSUkrgmphfgGeUa3VmQAT5xIXwMLQ2uOdQQRSSbzgweEYwz5/phByjVGPAnEHOFjY1uMdR",
+	"8fMFLc0s66ej+hj+LYu1Du4Md8q1IELPeqbr7RlxwGyYtN2pA2wj+MBhOXRq3nrD75pAzKYBa8fjb8j/",
+	"Jb+zXAluNghyQfN+kmUulj21oBuHTtsX7VSJ3UBwwywLBcfRcb5DVMCEScsH+56ayKFRc5rnhmXUR5yw",
+	"rLKKdDFwYtjN/VOynAkFBOP/DbUZQVedkeNT82FC81wRMZmQkpsnIpaFvQjOLq9BYhUAPXCCsDciTDxG",
+	"aT5m01KUqoc1JRVlnpGpIMDMGSNLugqf/mAmjM9+OSPwsaS55d4uY5pMLAENnBZTW7lCcTMGjVSRZqBZ",
+	"spc5rGekRSMCSrFsB98UnqLAvEsquQ/Y7mv2DEdPjfySfP4HojJpUEljtgq+UaobSvgNWCt7xppBOB91",
+	"3QJ8UwnZLWyLfHzuwsPDAQsXwUoLruzPth3axGxMNvFReGtugVYGm6bq0iew9c7q/WERidfbEFQxaeQQ",
+	"7JsssEOARs88OJfDsndKwM5FE7ZbkdBnjmZC1je4mleVZgIeoQIjH4hzyPQyCe+cWcOEDIavGsSRAiSx",
+	"2+63m9tJ1JEtu8/GgID6ycpdvP0dfGqwhCBnwOtDmm/xwU2Jg4aDB03XVSSplXNyhgW9UJy2jMPocEbg",
+	"ISnl6EIxzCco6IQk5armUZWqaLOXOony2oYhhLOaXCpTxV+CWU1Nc2RFnvVx9RCI8epnggekVfA52v0y",
+	"xB3P34avruvUfBlbmWXFt25oMZxke5SlhewsUtKk4psNawF6G+56r6H9FPMd2hHe+nPgh3Dm55oUGyES",
+	"oWiGbXVFzn383D6BYhaxw0erntuqekWphwllexYWh6IeieBCN1r4IxGgGyLUel7hDBPBdisAY1+JBM3l",
+	"VOmL0sUY7XmUJCzEZf+RQtyyip1z1YLqxTf3HgX5/iRsc+FuHOp4Xim663WmPu0iXMwZ3+VxXqY5sL5u",
+	"3HYqU583XCr1BeO7viFK3fOVHVa0IWWqGqe96rUVVRCrIJ14DIWQ+lttSPb81/LYisMGeepvlSjS0YDK",
+	"OWQXVVWYHtAZUwUXTeGpjzWyUb6mx+MZm0LIgPH2pyd373/zyPsUnEUUsq1VLGZUXWhZ2lCmrj30wEci",
+	"lhey01nZ6nk07NO6WfqpGRL+RIXnYkfk3PzQ9q0MaOM6o/stC6IFsWUJG1EFPqLgjNw9IbaqBsLF2uX6",
+	"GaMlo1PoObUXgHvMTuzAPZ1cBrT96SucwdJwHK5vqgPgZI1ttQ940qzv1KWZZI2HNLDdYG31+Wvsr8vx",
+	"qpMfZH3Iw76XDCY71CrZKb5qCyzjq9r7sm9u7uZX/u9MzzJJ4x7LA9QpDShPocWhwp2WRg98a/bs1uOF",
+	"U4QDcmWgEnVU9/5M68IWfGV8Iron8hyjT7MpyMSdMqxxgtryxxJKIFj/qfKKomEH6PzeO/6OP88UodJc",
+	"JCmb0xxLUJ2aY7sipQKMJXr0kIyZVragLCX/fvvqF1+zIROgCBf6HsGjaIdqBWDfIx+o/kCQR9GxKG0e",
+	"UUGVPiV1qfJ3/Kt2NYivg8XLE8d35kC5qjl+5YpzRcKoNi87DsT0PfKCKe2qvzBOCjoFdUY+GEXoA9YO",
+	"n8E7butR+3vV8jIDKV9R3NUkcIlQwLN75EfK8lKC3bWr50tslLYiX5mVP374zbdfVwW8MM6bfEhFBh8s",
+	"ND9UsdQfiKIr9Y7XEdT3yI9saodHuDkjGs6FihPNSUY1PSW5SGlOZJmDQjxmYGBJ5nRFFPh66FCYhc9t",
+	"xXEXaT2agLbB0QuQyvmZfMwXLdjodPTg3vG9By5YGOn1aHFylDWrBU5ttQtzxjDI8Hk2Oh0ZiNc1BdeK",
+	"I98/Pt5QGHm3gsj1JIGSyPU68SdXGDw8YLXCRo1lcy3M51Su3CmzIEY3VC7EJfqlMYYR4/XpVOHxtxfd",
+	"e/O6AZblykEo/Qv0SzgkdHyyWBc0dRW9AWDz+0zYegCGl5Ex5MIIBVo0oGKpt4ZKUSXDRenH5csdFDw4",
+	"QwA8bnn7g+aHBcjVWGQrDBypFOoOWPCODQDiSZa99pE6Ln3je2EzNAcBQZ3Me92+x7Qs4boD+5NbIE3M",
+	"yhsA9E8yc11ZIsfbhMxpOkODcmrrU28jz6Mri7Dr9eYbEa9//chRq5XA9XtkoOmsi1+bWHhQFLcyGHth",
+	"+TYYkI2cWuF9xsVyAHzbHVYov6MIZl2iJMGFBl+PAlZWX8Hczd4kcKQrk1aUYzmr1wHh6WYIMXT3y/7H",
+	"poafHTOpikLpGTBJbA0qFeFie56SIBPEglvnrgTWgbigr7t1q0ywWUksgFNrYx0ApzgPoRahGJznsGjE",
+	"XzUTS27rtAhbqm+3I3F0hX+vrWaSg7VHtzH4Bo3RNQoPeTxCkPTG8P1BaXfiYTn8IUiCDUp0g/hv1mDp",
+	"vcPhotbWo3zMa/QHxJSfIoArv8JhZHY3miurDEYjnBdCuqw7hzs/ZUXp7oujK/vP9SYR/re6ecxBgRUT",
+	"450rewgx3lWerqzKvokMOFOeNTPgl4aHOIufVLbjVRCgu56GRq+edZqtsHFkw5bmob5oO84QlbtxhvOq",
+	"IMnwd067984ty2VVd5wATc3EkswpXw1AUf9iC3AGahsWj6wOVSFnQXKR3dhMB81ULgCj0qatMe26ByUc",
+	"LZ3t70Ak4U2LhySKdfPl35MsXoAmlKNa7LKhLYlULHrKFsCbJLMDRaStBkMxpt1oQ3RAeDZmiTDvxmqH",
+	"ue84LDGsvNP/yPvIkIU35RaserAno46dmZf0Ev6WoH7Lphyt4+0MX7wpvUrbhfF2mj1yYaHb6dY3hTw4",
+	"PM1EEZCaxQ5DtkU5zllqBvQJNX56a17Hz67y79DEG8UKVkfeKCk/tY8cUqVBdheCv/1hGKlvJUpMJQnw",
+	"2YPwBYTbuWsvtdPwa21izRSHuIhbvaxu2SrgQjI7GF+JUiqCRdZR/Ma8dSJLrogoB7k/6CXU4pghgMQL",
+	"aIIDdnLbRTaz5+foCv9eH8EnDa5o4o0JKtn6tG9UHKe9H3AdT6uWxYdioDYrInIX+ZSJPTH2PUxdR1VL",
+	"DNSFHt8QRa5i1+fHkSvK8LTRV3roE75W9+GWJe3YGUc3movcHUL5ojYOYEzTS2vHdYXA6I5C9TqdYHzz",
+	"l0AnuJDD0kmrpsRnoBNMBQgaNV2U+QBuSgztQFJZ661wRmijSAFhykdZ4HNMO+8KoZrYyj59SQrqdnhR",
+	"8cq3zDsggP0UIRcVhooMAl2rI8RUMPfFfrJWEu6QXunPG/qsh9/0qTC9wbjyrYCvIkztjiJomw7N5trJ",
+	"9DdoJ7GMfAyYWYD3aEBkQt9srE9b8eNQoFx8/jHkYrlt/qrr2Y37mofRJmS2tq+KekcizwAjQavMFf+F",
+	"NRsEy+Vtd2DUzf57Pm17+sc1L8cbjq48TDca4H9wEb8H5RFRHRh8ttWeTOIVd2M17unxSrdcF7Yl5KE4",
+	"R9vl1AiO7eF16kWxcXx/KoRs2uvWGfEMq7mcEaDpzELpjiIp5YKzlOYOTh5sTNYNHhPCOMEjcUbaRiCV",
+	"1BGEYuIiC22bbVff3BbsQWeHsuVIfCESt96ko1mYr1949r4jPeZtglw/h0Hic/gfxgZjAzC9j0fZSM8X",
+	"zLW9R/DYnEvX4DtrBAYwRRTIxfCWxRjJNJO7o/LDj3WG5sGYQzXHISWI333MoSKqVAVLmSgV4WKZkLlQ",
+	"mmCWsw/z70QiHkCsaPQD3FmwqJJtDyuS1EnyseEaBSf6hWs8+0z3YY5tsg7l63whxOWvxYHUp3aHr1vW",
+	"nlxjtlBojbWa4M1AqBomNuS82QpJTNBd1iztkpgTi6GIuhH8jiY2l5PpTm6VehJXn+rCwAegiNdC6Zcu",
+	"I/qLNM+2azTernk2Kg1axXgAOvq3MOS5FDUxjVeEkpzxy5Dst5lEjopG2aUDkIod3VPLl4Hs42Hn9oWr",
+	"Ajg3OpwC4EPd8ZQg1sgSy1zN6SWcES70jPFpbXvZhQh43REtpj/5pmkHBKOfIiLG+kUOxILrkmq+MGOr",
+	"KGOAyx5AQvrUT3GK17gLD7s6zLB/7T/seqU1cUkY96qBbcJN87g95EbC2Ps42VdN36LagW8MtyvyqXo1",
+	"GR1UDjzoSbSbDpxED7NhTmEKedUBQdbZwRj7RedgQwt9RHndNtOdTb+WA/mfn2SZa7l3sIBy3y/wdoWT",
+	"5qyHSav5ERFJKCK4xmbBOIfMMtpWQ8suRrec2aMrM+L15hurwt1Bj0n8vvK9IPdOtrBDVSG17ij01hSG",
+	"OSfbuZOdp+/TlkO+74fooxlTWsjVdoT/5B78PO4g77Aahj224sZ8+eBGL10bDWshdUcR248zIdZg3zH1",
+	"fJlkMLwhBE2K6igVXDGFWmaUal5LsYCnjQcPmeaGls5Ymq39cW+qwUmqOEOiJbjMfsX+AjIVoIjgtiEV",
+	"5Ugo0rmfhjTIdgQ9nN15Nu2kZmURIc92T7mZRyHihNuydrOYt+wv2E5UjKd56fv8xEnqefXY34igKHfe",
+	"DqaIM4216evMulRc1L7VRO2ddJecDE9iQU/28A6pochnAdy3y4vdYK/rp/akm039BtdLjgQ8Eq/fvPrt",
+	"Lrp2MpGWvgj0ABUA0ENm/URNIyh+kxCqGjN/9fuDp/jx69tyF32su7nFMOQbvh3wWPspAojBDlZDCBc/",
+	"iSVZArbfb1ij5wB6rWKYr0Y0bM7W3sLhR9+oK44nKOGwWDITRJivXd4QJ8Yn1S2FvLQJdMrn2wlb159g",
+	"IdOBQ7JjcPeNbA7pU/ANib5Ut8J6w6S/nWfhV54JjOX2VfJ625GtCXyzQe2Ne+a/OR2iLrXtA28o07av",
+	"HrEwIOMVWYly4HM5jH7k+f3RlftvoxnlbWVyPRi+qj4TYW6q6jYUw3hPvPZs+aeQZAZ5lcZMNbENcbAv",
+	"5mFcAVuedhNhUHN/JPYxkThI/21tJBVu7yhf7JQgLrUtSB21jXwO3H4O20iAbOZg1LXNTPule+agTlQ7",
+	"xSEjpNqOP2U1V9+arPYt/a8jiqo79IFEOuyx86XKc2udM/9mwtxrKjWGidgOQIbk106AkfT8jThe2WZX",
+	"1h6C3Z/HoJcAaO6Z7yILWqK6ncAST19fBnkcDzv3rQaWINaGCyxpkNrRVf1hs8DZdAweOOrvuYZg+mXD",
+	"yzZsyJ8zljZahe4e7Td8GL9qgzxmNx0g7HWLXacqvBwvn1cVVrlt5XE4KcTM4GKyl0LqGcmEOWGd0Oxh",
+	"NMZgHI1vXdQbJK5d0y0FXd88+rvZrG7L6+tNyITvE2WOn8+btCrgsElz/zUh5UiBR1fWobORabsyDf/N",
+	"qdBPGqmtWLjMNy7wYRezSmu+XZuOmeUXF0PXE1VHQ0hdO64snn5tllIRyEEMso32419Q7jVVrqv1MLVr",
+	"n2AHG6LEHLAqFuQK7ihSdwhMLOPSpeSE6TM0RtpuYmvZ2SXP2k7/bXnYutXPK8oE6qcOCfF6lmBR7kbZ",
+	"+yHSsmk6q4vdohtmvCIZXZ35YvsKwIUoiiVPbO9BmxxosHRH3c6N3u826jJP23glwwbJwZtYink4/ziz",
+	"IkSvWTCBMj7J2l298xS2D+ScZZxNZ1qRApXeGZgpFfnq+ZNfnmAE4teR+f+ypyGUDf3r+dNgodRGow7E",
+	"oGvR8cd7wwhtlqNFbSnz0enoCBmko4OrGmmugnz1TV3X9GpNWmh9V6V01kO5eI/qizpQ96qZPt/+wib/",
+	"Xb+//p8AAAD//w==",
 }
 
 // decodeSpec returns the embedded OpenAPI spec as raw JSON bytes,

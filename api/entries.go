@@ -44,6 +44,14 @@ func (s *Server) ListEntries(ctx context.Context, r ListEntriesRequestObject) (L
 	return ListEntries200JSONResponse(out), nil
 }
 
+// historyPage is a page of a history, oldest first.
+func historyPage(list []ledger.Entry, cursor *string, limit *int) (Entries, error) {
+	page, next, err := pageOf(list, func(e ledger.Entry) string { return strconv.FormatInt(e.Position, 10) }, cursor, limit)
+	out := toEntries(page)
+	out.Next = next
+	return out, err
+}
+
 func badCursor() error {
 	return fault.New(fault.Invalid, "cursor-malformed", "the cursor is not one that a page returned").WithField("cursor").
 		WithNext("begin again without a cursor")

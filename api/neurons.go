@@ -13,7 +13,11 @@ func (s *Server) ListNeurons(ctx context.Context, r ListNeuronsRequestObject) (L
 		return nil, err
 	}
 	list, err := v.Neurons(ctx, at)
-	return ListNeurons200JSONResponse{Items: each(list, toNeuron)}, err
+	if err != nil {
+		return nil, err
+	}
+	page, next, err := pageOf(list, func(n ledger.Neuron) string { return n.Name }, r.Params.Cursor, r.Params.Limit)
+	return ListNeurons200JSONResponse{Items: each(page, toNeuron), Next: next}, err
 }
 
 // AddNeuron follows another. Its anchor may be a point: the nearest supervoxel of the whole volume.
@@ -52,5 +56,9 @@ func (s *Server) GetNeuronHistory(ctx context.Context, r GetNeuronHistoryRequest
 		return nil, err
 	}
 	list, err := v.AnchorEntries(ctx, n.Anchor)
-	return GetNeuronHistory200JSONResponse(toEntries(list)), err
+	if err != nil {
+		return nil, err
+	}
+	page, err := historyPage(list, r.Params.Cursor, r.Params.Limit)
+	return GetNeuronHistory200JSONResponse(page), err
 }

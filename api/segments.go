@@ -116,17 +116,9 @@ func (s *Server) GetSegmentHistory(ctx context.Context, r GetSegmentHistoryReque
 		return nil, err
 	}
 	list, err := v.SegmentEntries(ctx, id)
-	return GetSegmentHistory200JSONResponse(toEntries(list)), err
-}
-
-const (
-	pageUsual = 100
-	pageMost  = 1000
-)
-
-func pageSize(asked *int) int {
-	if asked == nil {
-		return pageUsual
+	if err != nil {
+		return nil, err
 	}
-	return min(*asked, pageMost)
+	page, err := historyPage(list, r.Params.Cursor, r.Params.Limit)
+	return GetSegmentHistory200JSONResponse(page), err
 }

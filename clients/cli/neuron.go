@@ -2,6 +2,7 @@ package cli
 
 import (
 	"github.com/spf13/cobra"
+	"net/http"
 
 	"fettle.example/fettle/clients/fettle"
 )
@@ -49,7 +50,9 @@ func (a *app) neuronListCommand() *cobra.Command {
 			if err != nil {
 				return err
 			}
-			neurons, err := listOf[fettle.Neuron](a.client.ListNeurons(cmd.Context(), name, &fettle.ListNeuronsParams{At: moment}))
+			neurons, err := every[fettle.Neuron](0, func(cursor *string, n *int) (*http.Response, error) {
+				return a.client.ListNeurons(cmd.Context(), name, &fettle.ListNeuronsParams{At: moment, Cursor: cursor, Limit: n})
+			})
 			if err != nil {
 				return err
 			}
@@ -101,7 +104,9 @@ func (a *app) neuronHistoryCommand() *cobra.Command {
 			if err != nil {
 				return err
 			}
-			entries, err := listOf[fettle.Entry](a.client.GetNeuronHistory(cmd.Context(), name, args[0]))
+			entries, err := every[fettle.Entry](0, func(cursor *string, n *int) (*http.Response, error) {
+				return a.client.GetNeuronHistory(cmd.Context(), name, args[0], &fettle.GetNeuronHistoryParams{Cursor: cursor, Limit: n})
+			})
 			if err != nil {
 				return err
 			}

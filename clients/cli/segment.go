@@ -125,7 +125,9 @@ func (a *app) segmentHistoryCommand() *cobra.Command {
 			if err != nil {
 				return err
 			}
-			entries, err := listOf[fettle.Entry](a.client.GetSegmentHistory(cmd.Context(), name, id))
+			entries, err := every[fettle.Entry](0, func(cursor *string, n *int) (*http.Response, error) {
+				return a.client.GetSegmentHistory(cmd.Context(), name, id, &fettle.GetSegmentHistoryParams{Cursor: cursor, Limit: n})
+			})
 			if err != nil {
 				return err
 			}

@@ -498,6 +498,7 @@ type Neuron struct {
 // Neurons defines model for Neurons.
 type Neurons struct {
 	Items []Neuron `json:"items"`
+	Next  *string  `json:"next,omitempty"`
 }
 
 // NewNeuron defines model for NewNeuron.
@@ -1032,13 +1033,21 @@ type GetNearestParams struct {
 // ListNeuronsParams defines parameters for ListNeurons.
 type ListNeuronsParams struct {
 	// At a position, or an RFC 3339 time
-	At *AsOf `form:"at,omitempty" json:"at,omitempty"`
+	At     *AsOf       `form:"at,omitempty" json:"at,omitempty"`
+	Cursor *PageCursor `form:"cursor,omitempty" json:"cursor,omitempty"`
+	Limit  *PageLimit  `form:"limit,omitempty" json:"limit,omitempty"`
 }
 
 // GetNeuronParams defines parameters for GetNeuron.
 type GetNeuronParams struct {
 	// At a position, or an RFC 3339 time
 	At *AsOf `form:"at,omitempty" json:"at,omitempty"`
+}
+
+// GetNeuronHistoryParams defines parameters for GetNeuronHistory.
+type GetNeuronHistoryParams struct {
+	Cursor *PageCursor `form:"cursor,omitempty" json:"cursor,omitempty"`
+	Limit  *PageLimit  `form:"limit,omitempty" json:"limit,omitempty"`
 }
 
 // ProveConsistencyParams defines parameters for ProveConsistency.
@@ -1074,6 +1083,12 @@ type PostReversalParams struct {
 // ListReviewsParams defines parameters for ListReviews.
 type ListReviewsParams struct {
 	Limit *PageLimit `form:"limit,omitempty" json:"limit,omitempty"`
+}
+
+// GetSegmentHistoryParams defines parameters for GetSegmentHistory.
+type GetSegmentHistoryParams struct {
+	Cursor *PageCursor `form:"cursor,omitempty" json:"cursor,omitempty"`
+	Limit  *PageLimit  `form:"limit,omitempty" json:"limit,omitempty"`
 }
 
 // ListMembersParams defines parameters for ListMembers.
@@ -1678,7 +1693,7 @@ type ClientInterface interface {
 	// GetNeuronHistory The entries that changed the segment of a neuron's anchor, oldest first
 	//
 	// Corresponds with GET /v1/volumes/{volume}/neurons/{name}/history (the `GetNeuronHistory` operationId).
-	GetNeuronHistory(ctx context.Context, volume VolumeName, name NeuronName, reqEditors ...RequestEditorFn) (*http.Response, error)
+	GetNeuronHistory(ctx context.Context, volume VolumeName, name NeuronName, params *GetNeuronHistoryParams, reqEditors ...RequestEditorFn) (*http.Response, error)
 
 	// ProveConsistency Proof that the tree of a size goes on from an older one
 	//
@@ -1732,7 +1747,7 @@ type ClientInterface interface {
 	// GetSegmentHistory The entries that a segment's content came through, oldest first
 	//
 	// Corresponds with GET /v1/volumes/{volume}/segments/{segment}/history (the `GetSegmentHistory` operationId).
-	GetSegmentHistory(ctx context.Context, volume VolumeName, segment SegmentID, reqEditors ...RequestEditorFn) (*http.Response, error)
+	GetSegmentHistory(ctx context.Context, volume VolumeName, segment SegmentID, params *GetSegmentHistoryParams, reqEditors ...RequestEditorFn) (*http.Response, error)
 
 	// ListMembers The supervoxels of a current segment
 	//
@@ -2500,8 +2515,8 @@ func (c *Client) GetNeuron(ctx context.Context, volume VolumeName, name NeuronNa
 // GetNeuronHistory The entries that changed the segment of a neuron's anchor, oldest first
 //
 // Corresponds with GET /v1/volumes/{volume}/neurons/{name}/history (the `GetNeuronHistory` operationId).
-func (c *Client) GetNeuronHistory(ctx context.Context, volume VolumeName, name NeuronName, reqEditors ...RequestEditorFn) (*http.Response, error) {
-	req, err := NewGetNeuronHistoryRequest(c.Server, volume, name)
+func (c *Client) GetNeuronHistory(ctx context.Context, volume VolumeName, name NeuronName, params *GetNeuronHistoryParams, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewGetNeuronHistoryRequest(c.Server, volume, name, params)
 	if err != nil {
 		return nil, err
 	}
@@ -2654,8 +2669,8 @@ func (c *Client) GetSegment(ctx context.Context, volume VolumeName, segment Segm
 // GetSegmentHistory The entries that a segment's content came through, oldest first
 //
 // Corresponds with GET /v1/volumes/{volume}/segments/{segment}/history (the `GetSegmentHistory` operationId).
-func (c *Client) GetSegmentHistory(ctx context.Context, volume VolumeName, segment SegmentID, reqEditors ...RequestEditorFn) (*http.Response, error) {
-	req, err := NewGetSegmentHistoryRequest(c.Server, volume, segment)
+func (c *Client) GetSegmentHistory(ctx context.Context, volume VolumeName, segment SegmentID, params *GetSegmentHistoryParams, reqEditors ...RequestEditorFn) (*http.Response, error) {
+	req, err := NewGetSegmentHistoryRequest(c.Server, volume, segment, params)
 	if err != nil {
 		return nil, err
 	}
@@ -4260,6 +4275,30 @@ func NewListNeuronsRequest(server string, volume VolumeName, params *ListNeurons
 
 		}
 
+		if params.Cursor != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "cursor", *params.Cursor, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "string", Format: ""}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
+		if params.Limit != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "limit", *params.Limit, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "integer", Format: ""}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
 		if encoded := queryValues.Encode(); encoded != "" {
 			rawQueryFragments = append(rawQueryFragments, encoded)
 		}
@@ -4390,7 +4429,7 @@ func NewGetNeuronRequest(server string, volume VolumeName, name NeuronName, para
 }
 
 // NewGetNeuronHistoryRequest constructs an http.Request for the GetNeuronHistory method
-func NewGetNeuronHistoryRequest(server string, volume VolumeName, name NeuronName) (*http.Request, error) {
+func NewGetNeuronHistoryRequest(server string, volume VolumeName, name NeuronName, params *GetNeuronHistoryParams) (*http.Request, error) {
 	var err error
 
 	var pathParam0 string
@@ -4420,6 +4459,45 @@ func NewGetNeuronHistoryRequest(server string, volume VolumeName, name NeuronNam
 	queryURL, err := serverURL.Parse(operationPath)
 	if err != nil {
 		return nil, err
+	}
+
+	if params != nil {
+		// queryValues collects non-styled parameters (passthrough, JSON)
+		// that are safe to round-trip through url.Values.Encode().
+		queryValues := queryURL.Query()
+		// rawQueryFragments collects pre-encoded query fragments from
+		// styled parameters, preserving literal commas as delimiters
+		// per the OpenAPI spec (e.g. "color=blue,black,brown").
+		var rawQueryFragments []string
+
+		if params.Cursor != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "cursor", *params.Cursor, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "string", Format: ""}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
+		if params.Limit != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "limit", *params.Limit, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "integer", Format: ""}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
+		if encoded := queryValues.Encode(); encoded != "" {
+			rawQueryFragments = append(rawQueryFragments, encoded)
+		}
+		queryURL.RawQuery = strings.Join(rawQueryFragments, "&")
 	}
 
 	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
@@ -4860,7 +4938,7 @@ func NewGetSegmentRequest(server string, volume VolumeName, segment SegmentID) (
 }
 
 // NewGetSegmentHistoryRequest constructs an http.Request for the GetSegmentHistory method
-func NewGetSegmentHistoryRequest(server string, volume VolumeName, segment SegmentID) (*http.Request, error) {
+func NewGetSegmentHistoryRequest(server string, volume VolumeName, segment SegmentID, params *GetSegmentHistoryParams) (*http.Request, error) {
 	var err error
 
 	var pathParam0 string
@@ -4890,6 +4968,45 @@ func NewGetSegmentHistoryRequest(server string, volume VolumeName, segment Segme
 	queryURL, err := serverURL.Parse(operationPath)
 	if err != nil {
 		return nil, err
+	}
+
+	if params != nil {
+		// queryValues collects non-styled parameters (passthrough, JSON)
+		// that are safe to round-trip through url.Values.Encode().
+		queryValues := queryURL.Query()
+		// rawQueryFragments collects pre-encoded query fragments from
+		// styled parameters, preserving literal commas as delimiters
+		// per the OpenAPI spec (e.g. "color=blue,black,brown").
+		var rawQueryFragments []string
+
+		if params.Cursor != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "cursor", *params.Cursor, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "string", Format: ""}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
+		if params.Limit != nil {
+
+			if queryFrag, err := runtime.StyleParamWithOptions("form", true, "limit", *params.Limit, runtime.StyleParamOptions{ParamLocation: runtime.ParamLocationQuery, Type: "integer", Format: ""}); err != nil {
+				return nil, err
+			} else {
+				for _, qp := range strings.Split(queryFrag, "&") {
+					rawQueryFragments = append(rawQueryFragments, qp)
+				}
+			}
+
+		}
+
+		if encoded := queryValues.Encode(); encoded != "" {
+			rawQueryFragments = append(rawQueryFragments, encoded)
+		}
+		queryURL.RawQuery = strings.Join(rawQueryFragments, "&")
 	}
 
 	req, err := http.NewRequest(http.MethodGet, queryURL.String(), nil)
@@ -5844,7 +5961,7 @@ type ClientWithResponsesInterface interface {
 	// Returns a wrapper object for the known response body format(s).
 	//
 	// Corresponds with GET /v1/volumes/{volume}/neurons/{name}/history (the `GetNeuronHistory` operationId).
-	GetNeuronHistoryWithResponse(ctx context.Context, volume VolumeName, name NeuronName, reqEditors ...RequestEditorFn) (*GetNeuronHistoryResponse, error)
+	GetNeuronHistoryWithResponse(ctx context.Context, volume VolumeName, name NeuronName, params *GetNeuronHistoryParams, reqEditors ...RequestEditorFn) (*GetNeuronHistoryResponse, error)
 
 	// ProveConsistencyWithResponse Proof that the tree of a size goes on from an older one
 	//
@@ -5914,7 +6031,7 @@ type ClientWithResponsesInterface interface {
 	// Returns a wrapper object for the known response body format(s).
 	//
 	// Corresponds with GET /v1/volumes/{volume}/segments/{segment}/history (the `GetSegmentHistory` operationId).
-	GetSegmentHistoryWithResponse(ctx context.Context, volume VolumeName, segment SegmentID, reqEditors ...RequestEditorFn) (*GetSegmentHistoryResponse, error)
+	GetSegmentHistoryWithResponse(ctx context.Context, volume VolumeName, segment SegmentID, params *GetSegmentHistoryParams, reqEditors ...RequestEditorFn) (*GetSegmentHistoryResponse, error)
 
 	// ListMembersWithResponse The supervoxels of a current segment
 	//
@@ -8905,8 +9022,8 @@ func (c *ClientWithResponses) GetNeuronWithResponse(ctx context.Context, volume 
 // Returns a wrapper object for the known response body format(s).
 //
 // Corresponds with GET /v1/volumes/{volume}/neurons/{name}/history (the `GetNeuronHistory` operationId).
-func (c *ClientWithResponses) GetNeuronHistoryWithResponse(ctx context.Context, volume VolumeName, name NeuronName, reqEditors ...RequestEditorFn) (*GetNeuronHistoryResponse, error) {
-	rsp, err := c.GetNeuronHistory(ctx, volume, name, reqEditors...)
+func (c *ClientWithResponses) GetNeuronHistoryWithResponse(ctx context.Context, volume VolumeName, name NeuronName, params *GetNeuronHistoryParams, reqEditors ...RequestEditorFn) (*GetNeuronHistoryResponse, error) {
+	rsp, err := c.GetNeuronHistory(ctx, volume, name, params, reqEditors...)
 	if err != nil {
 		return nil, err
 	}
@@ -9035,8 +9152,8 @@ func (c *ClientWithResponses) GetSegmentWithResponse(ctx context.Context, volume
 // Returns a wrapper object for the known response body format(s).
 //
 // Corresponds with GET /v1/volumes/{volume}/segments/{segment}/history (the `GetSegmentHistory` operationId).
-func (c *ClientWithResponses) GetSegmentHistoryWithResponse(ctx context.Context, volume VolumeName, segment SegmentID, reqEditors ...RequestEditorFn) (*GetSegmentHistoryResponse, error) {
-	rsp, err := c.GetSegmentHistory(ctx, volume, segment, reqEditors...)
+func (c *ClientWithResponses) GetSegmentHistoryWithResponse(ctx context.Context, volume VolumeName, segment SegmentID, params *GetSegmentHistoryParams, reqEditors ...RequestEditorFn) (*GetSegmentHistoryResponse, error) {
+	rsp, err := c.GetSegmentHistory(ctx, volume, segment, params, reqEditors...)
 	if err != nil {
 		return nil, err
 	}
