@@ -61,12 +61,7 @@ func (a *app) printTask(t fettle.Task) error {
 		{"gain", fixed(t.Gain, 1) + " synapses expected"}, {"expected time", fixed(t.Minutes, 1) + " min"},
 		{"proposal", proposal(t.Proposal)}, {"assigned to", has(t.AssignedTo)},
 	}
-	for _, f := range t.Findings {
-		fields = append(fields, field{"finding", fmt.Sprintf("%s: %s", f.Detector, f.Said)})
-		for _, e := range f.Evidence {
-			fields = append(fields, field{"", "  " + strings.TrimSpace(e.Name+" "+number(e.Value, 2)+" "+has(e.Unit))})
-		}
-	}
+	fields = append(fields, findings(t.Findings)...)
 	if c := t.Claim; c != nil && c.Ended == nil {
 		fields = append(fields, field{"claimed", fmt.Sprintf("by %s until %s", c.Person, a.when(c.Until))})
 	}
@@ -88,6 +83,30 @@ func (a *app) printTask(t fettle.Task) error {
 		fields = append(fields, field{"history", withNote(strings.TrimSpace(a.when(e.At)+" "+e.What+" "+has(e.Person)), has(e.Note))})
 	}
 	return record(a, t, fields...)
+}
+
+// findings shows the weightiest finding of each detector whole, and counts the others of it nearby, which say nearly the same.
+func findings(all []fettle.Finding) (out []field) {
+	more := make(map[string]int)
+	for _, f := range all {
+		more[f.Detector]++
+	}
+	for _, f := range all {
+		n := more[f.Detector]
+		if n == 0 {
+			continue
+		}
+		more[f.Detector] = 0
+		said := fmt.Sprintf("%s: %s", f.Detector, f.Said)
+		if n > 1 {
+			said += fmt.Sprintf(" (and %d like it nearby)", n-1)
+		}
+		out = append(out, field{"finding", said})
+		for _, e := range f.Evidence {
+			out = append(out, field{"", "  " + strings.TrimSpace(e.Name+" "+number(e.Value, 2)+" "+has(e.Unit))})
+		}
+	}
+	return out
 }
 
 // reviewed says a verdict as something that happened.
