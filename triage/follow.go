@@ -109,7 +109,14 @@ func (j *judge) carry(ctx context.Context, retired []ledger.ID, judged map[ledge
 	}
 	var out []Finding
 	for i, f := range old {
-		a, b := j.byID[now[2*i]], j.byID[now[2*i+1]]
+		a, err := j.segment(ctx, now[2*i])
+		if err != nil {
+			return nil, err
+		}
+		b, err := j.segment(ctx, now[2*i+1])
+		if err != nil {
+			return nil, err
+		}
 		at := smaller(a, b).ID
 		if a.ID == b.ID || judged[at] {
 			continue

@@ -38,6 +38,15 @@ func newJudge(ctx context.Context, v *ledger.Volume) (*judge, error) {
 	return j, err
 }
 
+// segment tells what a segment holds. One that an entry has made since the look began is asked for: the contacts to it are judged
+// from the smaller side, which that entry may not have changed.
+func (j *judge) segment(ctx context.Context, id ledger.ID) (ledger.Segment, error) {
+	if s, ok := j.byID[id]; ok {
+		return s, nil
+	}
+	return j.volume.Segment(ctx, id)
+}
+
 // look judges one segment. A segment that has changed meanwhile has no findings; the entry that changed it will be followed.
 func (j *judge) look(ctx context.Context, id ledger.ID) ([]Finding, error) {
 	w, err := j.volume.View(ctx, id)
@@ -48,7 +57,10 @@ func (j *judge) look(ctx context.Context, id ledger.ID) ([]Finding, error) {
 		return nil, err
 	}
 	c := NewCase(w, j.sizes, j.sizesOK)
-	c.Other = func(id ledger.ID) (ledger.Segment, bool) { s, ok := j.byID[id]; return s, ok }
+	c.Other = func(id ledger.ID) (ledger.Segment, bool) {
+		s, err := j.segment(ctx, id)
+		return s, err == nil
+	}
 	c.Place = func(g uint32) (base.Point, bool) {
 		one, err := j.volume.Base().View(ctx, j.volume.Pool(), []base.Range{{Lo: g, Hi: g + 1}})
 		if err != nil || one.Len() != 1 {
