@@ -288,6 +288,9 @@ func (s *state) advance(c *change) {
 	s.position = c.entry.Position
 	s.groups += c.groups
 	s.minted += c.minted
+	if c.entry.At.After(s.last) {
+		s.last = c.entry.At
+	}
 }
 
 // retreat undoes the change that was applied last.
