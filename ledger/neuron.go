@@ -5,6 +5,7 @@ import (
 	"errors"
 	"strings"
 	"time"
+	"unicode/utf8"
 
 	"github.com/jackc/pgx/v5"
 
@@ -24,7 +25,7 @@ type Neuron struct {
 // AddNeuron names a cell. A name or an anchor that is taken is fault.Conflict.
 func (v *Volume) AddNeuron(ctx context.Context, name string, anchor ID, by string) (Neuron, error) {
 	name = strings.TrimSpace(name)
-	if name == "" || len(name) > 100 {
+	if name == "" || utf8.RuneCountInString(name) > 100 {
 		return Neuron{}, fault.New(fault.Invalid, "neuron-name", "a neuron's name has 1 to 100 characters").WithField("name")
 	}
 	if _, err := v.ordinals([]ID{anchor}); err != nil {

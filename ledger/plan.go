@@ -91,8 +91,8 @@ func (d Draft) check() error {
 		return fault.New(fault.Invalid, "draft-person", "an entry needs the person who posts it")
 	case d.ID == uuid.Nil:
 		return fault.New(fault.Invalid, "draft-id", "an entry needs an id of its own, so that a repeat is recognised")
-	case len(d.Reason) > 2000:
-		return fault.New(fault.Invalid, "draft-reason", "the reason is longer than 2000 bytes").WithField("reason")
+	case utf8.RuneCountInString(d.Reason) > 2000:
+		return fault.New(fault.Invalid, "draft-reason", "the reason is longer than 2000 characters").WithField("reason")
 	case !utf8.ValidString(d.Reason) || strings.ContainsRune(d.Reason, 0):
 		return fault.New(fault.Invalid, "draft-reason", "the reason is not plain text in UTF-8").WithField("reason")
 	case d.Split != nil && len(d.Split.Groups) != 2:

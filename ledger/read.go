@@ -33,7 +33,7 @@ func (v *Volume) Resolve(ctx context.Context, at At) (int64, error) {
 	case at.Position != nil:
 		if *at.Position < 0 || *at.Position > head {
 			return 0, fault.Newf(fault.NotFound, "position-unknown", "volume %s has positions 0 to %d, not %d", v.info.Name, head, *at.Position).
-				WithField("at")
+				WithField("at").WithNext("name one of those, or a time")
 		}
 		return *at.Position, nil
 	case at.Time != nil:
