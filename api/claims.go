@@ -31,18 +31,27 @@ func (s *Server) ClaimTask(ctx context.Context, r ClaimTaskRequestObject) (Claim
 
 // ExtendClaim begins the lease again.
 func (s *Server) ExtendClaim(ctx context.Context, r ExtendClaimRequestObject) (ExtendClaimResponseObject, error) {
+	if err := s.Queue.OnVolume(ctx, r.Volume, r.Claim); err != nil {
+		return nil, err
+	}
 	c, err := s.Queue.Extend(ctx, caller(ctx), r.Claim)
 	return ExtendClaim200JSONResponse(toClaim(c)), err
 }
 
 // ReleaseClaim gives a task back.
 func (s *Server) ReleaseClaim(ctx context.Context, r ReleaseClaimRequestObject) (ReleaseClaimResponseObject, error) {
+	if err := s.Queue.OnVolume(ctx, r.Volume, r.Claim); err != nil {
+		return nil, err
+	}
 	t, err := s.Queue.Release(ctx, caller(ctx), r.Claim, r.Body.Reason)
 	return ReleaseClaim200JSONResponse(toTask(t)), err
 }
 
 // ResolveClaim ends a task with an outcome.
 func (s *Server) ResolveClaim(ctx context.Context, r ResolveClaimRequestObject) (ResolveClaimResponseObject, error) {
+	if err := s.Queue.OnVolume(ctx, r.Volume, r.Claim); err != nil {
+		return nil, err
+	}
 	in := tasks.Resolve{Outcome: string(r.Body.Outcome), Note: value(r.Body.Note)}
 	if r.Body.Merge != nil && r.Body.Split != nil {
 		return nil, fault.New(fault.Invalid, "correction-both", "a task is corrected by a merge or by a split").WithNext("send one of them")

@@ -168,6 +168,15 @@ func (q *Queue) liveClaim(ctx context.Context, id uuid.UUID, refusal error) erro
 	return refusal
 }
 
+// OnVolume refuses a claim on another volume's task, as if there were no such claim.
+func (q *Queue) OnVolume(ctx context.Context, volume string, claim uuid.UUID) error {
+	c, found, err := q.findClaim(ctx, claim)
+	if err == nil && found && c.name != volume {
+		return unknownClaim(claim)
+	}
+	return err
+}
+
 func unknownClaim(id uuid.UUID) error {
 	return fault.Newf(fault.NotFound, "claim-unknown", "there is no claim %s", id).WithNext("list the tasks that you hold")
 }

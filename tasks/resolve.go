@@ -151,9 +151,13 @@ func (q *Queue) entry(ctx context.Context, volume string, position int64) (*ledg
 }
 
 // Post appends a correction that belongs to no task. It is refused while somebody else holds a claim on a segment
-// that it would change, since that person is looking at it.
+// that it would change, since that person is looking at it. What somebody posted is undone by a reviewer, a lead or an agent.
 func (q *Queue) Post(ctx context.Context, volume string, p Person, d ledger.Draft) (ledger.Entry, error) {
-	if err := onlyFor(p, "post corrections", Proofreader, Lead, Agent); err != nil {
+	may := []Role{Proofreader, Lead, Agent}
+	if d.Reversal != nil {
+		may = []Role{Reviewer, Lead, Agent}
+	}
+	if err := onlyFor(p, "post corrections", may...); err != nil {
 		return ledger.Entry{}, err
 	}
 	v, err := q.led.Volume(ctx, volume)

@@ -4,6 +4,7 @@ import (
 	"testing"
 
 	"github.com/google/go-cmp/cmp"
+	"github.com/google/uuid"
 
 	"fettle.example/fettle/internal/fault"
 	"fettle.example/fettle/ledger"
@@ -123,6 +124,19 @@ func TestAReturnAfterTheReversal(t *testing.T) {
 	done, e, err := f.Review(t.Context(), f.name, task.Number, cedar, Return, "")
 	if err != nil || e.ID != undo.ID || done.Review.Reversal != undo.Position {
 		t.Errorf("%+v %+v %v", done.Review, e, err)
+	}
+}
+
+// Whoever reviews may undo an entry outside of a task too; whoever only posts may not.
+func TestWhoUndoes(t *testing.T) {
+	t.Parallel()
+	f := newField(t)
+	split := f.posts(alder, &ledger.Draft{Expected: []ledger.ID{twins}, Split: apart().Split})
+	undo := ledger.Draft{ID: uuid.Must(uuid.NewV7()), Expected: split.After, Reversal: &ledger.Reversal{Position: split.Position}}
+	_, err := f.Post(t.Context(), f.name, alder, undo)
+	want(t, err, fault.Forbidden, "role-missing")
+	if e, err := f.Post(t.Context(), f.name, cedar, undo); err != nil || e.Reverses != split.Position {
+		t.Errorf("%+v %v", e, err)
 	}
 }
 
