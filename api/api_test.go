@@ -197,6 +197,8 @@ func (h *house) correcting() {
 	}
 	h.refused(409, "already-reversed", "rowan", "POST", "/reversals", m{"position": 2, "expected": back.After}, key()...)
 
+	h.refused(400, "text-malformed", "nobody", "GET", "/entries?person=%00", nil)
+
 	for path, want := range map[string]int{"/entries": 3, "/entries?person=alder": 1, "/entries?kind=split": 1, "/entries?after=1": 2, "/entries?before=2": 1, "/entries?order=newest&limit=2": 2} {
 		if list := read[api.Entries](h, h.must(200, "nobody", "GET", path, nil)); len(list.Items) != want {
 			h.Errorf("%s: %d entries, want %d", path, len(list.Items), want)
@@ -254,6 +256,9 @@ func (h *house) working() {
 	claim := "/claims/" + task.Claim.Id.String()
 	h.must(200, "alder", "POST", claim+"/extend", nil)
 	h.refused(403, "claim-of-another", "birch", "POST", claim+"/extend", nil)
+	for way, body := range map[string]any{"/extend": nil, "/release": m{"reason": "no"}, "/resolve": m{"outcome": "sound"}} {
+		h.refused(404, "claim-unknown", "alder", "POST", "/v1/volumes/another"+claim+way, body)
+	}
 	h.must(200, "alder", "POST", claim+"/release", m{"reason": "the images end here"})
 	h.refused(410, "claim-ended", "alder", "POST", claim+"/extend", nil)
 

@@ -8,6 +8,7 @@ import (
 	"github.com/labstack/echo/v4"
 
 	"fettle.example/fettle/internal/fault"
+	"fettle.example/fettle/internal/pg"
 )
 
 // statusOf is the one table from kinds of failure to HTTP. clients/fettle/failure.go is its inverse.
@@ -87,10 +88,16 @@ func (s *Server) problem(err error, c echo.Context) {
 	}
 }
 
+// notText is PostgreSQL's code for text that it can't hold (character_not_in_repertoire).
+const notText = "22021"
+
 // asFault finds the fault in an error, or makes one of what echo and the generated code refuse.
 func asFault(err error) *fault.Error {
 	if f, ok := fault.As(err); ok {
 		return f
+	}
+	if pg.Code(err) == notText {
+		return fault.New(fault.Invalid, "text-malformed", "the request holds text that is not UTF-8, or a zero byte").WithNext("send plain text").Wrap(err)
 	}
 	var h *echo.HTTPError
 	if !errors.As(err, &h) {
