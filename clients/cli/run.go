@@ -46,9 +46,9 @@ func Run(ctx context.Context, args []string, s Streams) int {
 	root.SetIn(s.In)
 	root.SetOut(s.Out)
 	root.SetErr(s.Err)
-	err := root.ExecuteContext(ctx)
+	cmd, err := root.ExecuteContextC(ctx)
 	if err != nil && !a.began && fault.CodeOf(err) != "usage" {
-		err = usage("%v", err).WithNext("see fettle help") // cobra's own refusal: of a command or of arguments
+		err = usage("%v", err).WithNext("see " + cmd.CommandPath() + " --help") // cobra's own refusal: of a command or of arguments
 	}
 	if err != nil {
 		complain(s.Err, err, a.url)
